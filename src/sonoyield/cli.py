@@ -1,0 +1,145 @@
+"""The command line: nothing but wiring. Data on stdout, all else on stderr."""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated
+
+import typer
+
+from sonoyield._version import __version__
+
+if TYPE_CHECKING:
+    from sonoyield.expose.estimate import Estimate
+
+BAD_INPUT, NUMERICS, INTERRUPTED = 2, 3, 130
+
+app = typer.Typer(
+    add_completion=False,
+    no_args_is_help=True,
+    pretty_exceptions_enable=False,
+    rich_markup_mode=None,
+    help="Predict how much radical chemistry an ultrasound exposure makes.",
+)
+
+ProtocolFile = Annotated[Path, typer.Argument(metavar="FILE", help="Protocol file (TOML).")]
+AsJson = Annotated[bool, typer.Option("--json", help="Print the result as JSON.")]
+Out = Annotated[
+    Path | None, typer.Option(metavar="PATH", help="Write the result: .json, .csv or .parquet.")
+]
+HistoryPath = Annotated[
+    Path | None,
+    typer.Option(metavar="PATH", help="Write R, U, T, p, composition: .csv or .parquet."),
+]
+Both = Annotated[bool, typer.Option("--both", help="Run both couplings; report the difference.")]
+Quiet = Annotated[bool, typer.Option("--quiet", help="No progress and no warnings on stderr.")]
+
+
+def main() -> None:
+    """Entry point: run a command, and turn what goes wrong into an exit code."""
+    try:
+        app()
+    except KeyboardInterrupt:
+        _say("interrupted")
+        sys.exit(INTERRUPTED)
+
+
+def _version(wanted: bool) -> None:
+    if wanted:
+        typer.echo(f"sonoyield {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def _root(
+    version: Annotated[
+        bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version.")
+    ] = False,
+) -> None:
+    """Predict how much radical chemistry an ultrasound exposure makes.
+
+    Results are research estimates, never a treatment prescription.
+    """
+
+
+@app.command()
+def estimate(
+    file: ProtocolFile,
+    json: AsJson = False,
+    out: Out = None,
+    history: HistoryPath = None,
+    both: Both = False,
+    quiet: Quiet = False,
+) -> None:
+    """Radicals per collapse and per exposure of one protocol."""
+    from sonoyield.describe.errors import ProtocolError
+    from sonoyield.describe.protocol import Protocol
+    from sonoyield.show.files import HISTORY_SUFFIXES, RESULT_SUFFIXES
+
+    _check_target(out, "--out", RESULT_SUFFIXES)
+    _check_target(history, "--history", HISTORY_SUFFIXES)
+    try:
+        protocol = Protocol.load(file)
+    except ProtocolError as error:
+        _refuse(str(error))
+    if not quiet:
+        _tell_first_compilation()
+    from sonoyield.expose.estimate import estimate as run
+
+    result = run(protocol, both=both)
+    try:
+        _show(result, json, out, history)
+    except OSError as error:
+        _refuse(f"{error.filename or out or history}: cannot be written: {error.strerror}")
+    if not quiet:
+        for warning in result.warnings if json else ():
+            _say(f"warning: {warning}")
+    if not result.outcome.code.has_numbers:
+        _say(result.outcome.sentence)
+        raise typer.Exit(NUMERICS)
+
+
+def _show(result: Estimate, json: bool, out: Path | None, history: Path | None) -> None:
+    from sonoyield.show.files import to_json, write_history, write_result
+
+    if out is not None:
+        write_result(result.as_dict(), out)
+    if history is not None:
+        write_history(result.history, history)
+    if json:
+        typer.echo(to_json(result.as_dict()))
+    elif out is None:
+        from rich.console import Console
+
+        from sonoyield.show.tables import print_estimate
+
+        print_estimate(result, Console(highlight=False))
+
+
+def _check_target(path: Path | None, option: str, suffixes: tuple[str, ...]) -> None:
+    if path is None:
+        return
+    if path.suffix not in suffixes:
+        _refuse(f"{option} {path}: suffix {path.suffix!r}; allowed {', '.join(suffixes)}")
+    if not path.parent.is_dir():
+        _refuse(f"{option} {path}: there is no folder {path.parent}")
+    if path.is_dir():
+        _refuse(f"{option} {path}: is a folder")
+
+
+def _tell_first_compilation() -> None:
+    """Say so before the compiled stages are built, which happens once after installing."""
+    from sonoyield.collapse.compiled import is_cached
+
+    if not is_cached():
+        _say("compiling the bubble equations for this machine, once (up to half a minute) ...")
+
+
+def _refuse(message: str) -> None:
+    _say(f"error: {message}")
+    raise typer.Exit(BAD_INPUT)
+
+
+def _say(message: str) -> None:
+    typer.echo(message, err=True)

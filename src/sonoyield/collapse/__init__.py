@@ -1,0 +1,1 @@
+"""One bubble: its motion, its contents, its chemistry and what leaves it."""

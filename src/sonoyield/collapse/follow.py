@@ -1,0 +1,209 @@
+"""Follow one bubble from rest through its main collapses, wall and chemistry coupled both ways.
+
+A compiled explicit stage carries the cold, inert gas; Cantera's reactor network carries it while
+it is hot or holds radicals. A *main expansion maximum* is one with no larger radius within half a
+period before or after it; a *window* ends at one.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from sonoyield.collapse import cold
+from sonoyield.collapse import equations as eq
+from sonoyield.collapse.bubble import Bubble
+from sonoyield.collapse.history import History, Recorder
+from sonoyield.collapse.ledger import balance
+from sonoyield.collapse.reactor import HotStage, IntegrationError
+from sonoyield.describe.gas import ABSORBED, Array
+
+# Above these the reactor takes over: steam, oxygen and noble gases alone make fewer than 1e-9 of
+# the contents into radicals while they are compressed to 1500 K; hydrogen left by an earlier
+# collapse or the remains of radicals may react sooner.
+WARM_FRESH, WARM_USED = 1500.0, 1000.0  # K
+# The reactor lets go of colder gas when the radicals left in it are at most this share of those
+# delivered so far (which bounds what freezing them can change), or of the contents.
+QUIET_DELIVERED, QUIET_CONTENTS = 1e-4, 1e-9
+PATIENCE = 2.5  # periods without a main maximum before the run ends
+COLD_SHARE, HOT_SHARE = 0.1, 0.3  # of the tolerance asked for, so that the ledger closes
+COLD_STEPS = 20_000  # accepted steps of the explicit stage before it counts as stiff
+
+
+@dataclass(frozen=True)
+class Accuracy:
+    """Numerical choices of a run.
+
+    ``relative`` tolerance asked for; ``split``: let the compiled stage carry the cold gas (else
+    the reactor carries all of it); ``steps``: limit on the reactor's steps; ``tighten``: how often
+    a run whose ledger does not close is repeated with a tenth of the tolerance.
+    """
+
+    relative: float = 1e-6
+    split: bool = True
+    steps: int = 100_000
+    tighten: int = 2
+
+
+def follow(bubble: Bubble, collapses: int = 1, accuracy: Accuracy | None = None) -> History:
+    """Integrate from rest until ``collapses`` windows are complete.
+
+    Ends earlier, and says so in ``History.stopped``, where no main maximum comes within 2.5
+    periods, at the step limit, or where the integration fails.
+    """
+    accuracy = accuracy or Accuracy()
+    history = _Run(bubble, collapses, accuracy).complete()
+    for _ in range(accuracy.tighten):
+        if history.stopped in (STEP_LIMIT, FAILED) or balance(history).closed:
+            break
+        accuracy = replace(accuracy, relative=0.1 * accuracy.relative)
+        history = _Run(bubble, collapses, accuracy).complete()
+    return history
+
+
+class _Run:
+    def __init__(self, bubble: Bubble, collapses: int, accuracy: Accuracy) -> None:
+        self.bubble, self.accuracy = bubble, accuracy
+        self.wanted = collapses + 2  # marks: rest, the first main maximum, one a window
+        self.relative = COLD_SHARE * accuracy.relative
+        self.absolute = bubble.tolerances(self.relative)
+        self.time, self.state = 0.0, bubble.at_rest()
+        self.record = Recorder(self.state)
+        self.marks = [0]
+        self.crests: list[tuple[float, float]] = []
+        self.step = 1e-4 * bubble.period
+        self.implicit_only = not accuracy.split
+        self.hot = HotStage(bubble, HOT_SHARE * accuracy.relative)
+        self.counters = dict.fromkeys(("cold_steps", "hot_steps", "evaluations", "stages"), 0)
+        self.radicals = eq.MOLES + np.array([bubble.phase.index(name) for name in ABSORBED])
+        self.warm = WARM_FRESH
+        self.few = QUIET_CONTENTS * float(bubble.moles.sum())
+
+    def complete(self) -> History:
+        stopped = ""
+        while not stopped and len(self.marks) < self.wanted:
+            stopped = self._hot() if self._reactive() else self._cold()
+        times, states = self.record.arrays()
+        return History(
+            self.bubble, times, states, tuple(self.marks), stopped, dict(self.counters)
+        )
+
+    @property
+    def deadline(self) -> float:
+        return float(self.record.times[self.marks[-1]]) + PATIENCE * self.bubble.period
+
+    def _reactive(self) -> bool:
+        state, count = self.state, len(self.bubble.phase.species)
+        if self.implicit_only or state[eq.TEMPERATURE] > self.warm:
+            return True
+        left = state[self.radicals].sum()
+        if left <= self.few:
+            return False
+        return bool(left > QUIET_DELIVERED * state[self.radicals + count].sum())
+
+    def _cold(self) -> str:
+        times, states = _scratch(len(self.state))
+        why, taken, self.step = cold.integrate_frozen(
+            self.time, self.deadline, self.step, self.state, self.warm, self.relative,
+            self.absolute, *self.bubble.tables, times, states,
+        )  # fmt: skip
+        self.counters["cold_steps"] += taken
+        if taken:
+            self.time = float(times[taken - 1])
+            self.record.extend(times[:taken], states[:taken])
+        if why == cold.END:
+            return NO_MAXIMUM
+        if why in (cold.STIFF, cold.FAILED):
+            self.implicit_only = True
+        elif why == cold.MAXIMUM:
+            self._crest(self.time, self.state, self.record.last)
+        return ""
+
+    def _hot(self) -> str:
+        hot, before, deadline = self.hot, dict(self.counters), self.deadline
+        hot.begin(self.time, self.state)
+        self.warm = WARM_USED
+        stopped = ""
+        while not stopped and len(self.marks) < self.wanted:
+            rising = self.state[eq.SPEED] > 0.0
+            try:
+                hot.step()
+            except IntegrationError:
+                stopped = FAILED
+                break
+            if rising and hot.state[eq.SPEED] <= 0.0:
+                self._hot_crest()
+                deadline = self.deadline
+            self.record.add(hot.time, hot.state)
+            self.state[:] = hot.state
+            if hot.time >= deadline:
+                stopped = NO_MAXIMUM
+            elif before["hot_steps"] + hot.steps >= self.accuracy.steps:
+                stopped = STEP_LIMIT
+            elif not self._reactive():
+                break
+        self.time = hot.time
+        self.counters["stages"] += 1
+        self.counters["hot_steps"] = before["hot_steps"] + hot.steps
+        self.counters["evaluations"] = before["evaluations"] + hot.evaluations
+        self.step = 1e-4 * self.bubble.period
+        return stopped
+
+    def _hot_crest(self) -> None:
+        """Find the maximum inside the reactor's last step on its own polynomial."""
+        low, high = self.record.times[self.record.last], self.hot.time
+        state = self.hot.state
+        for _ in range(60):
+            middle = 0.5 * (low + high)
+            state = self.hot.between(middle)
+            if state[eq.SPEED] > 0.0:
+                low = middle
+            else:
+                high = middle
+            if high - low <= 1e-13 * high:
+                break
+        self.record.add(high, state)
+        self._crest(high, state, self.record.last)
+
+    def _crest(self, time: float, state: Array, row: int) -> None:
+        radius = float(state[eq.RADIUS])
+        half = 0.5 * self.bubble.period
+        larger = any(when > time - half and r > radius for when, r in self.crests)
+        self.crests.append((time, radius))
+        if not larger and not self._outgrown(time, state):
+            self.marks.append(row)
+
+    def _outgrown(self, time: float, state: Array) -> bool:
+        """Whether the radius grows larger within half a period, by a quick frozen look ahead."""
+        radius, stop = state[eq.RADIUS], time + 0.5 * self.bubble.period
+        ahead = state.copy()
+        step = 1e-4 * self.bubble.period
+        times, states = _scratch(len(state))
+        why = cold.MAXIMUM
+        while why == cold.MAXIMUM and time < stop:
+            why, taken, step = cold.integrate_frozen(
+                time, stop, step, ahead, np.inf, LOOK_AHEAD,
+                self.absolute * (LOOK_AHEAD / self.relative), *self.bubble.tables, times, states,
+            )  # fmt: skip
+            if taken == 0:
+                return False
+            time = float(times[taken - 1])
+            if states[:taken, eq.RADIUS].max() > radius * (1.0 + LOOK_AHEAD):
+                return True
+        return False
+
+
+NO_MAXIMUM = "no_maximum"
+STEP_LIMIT = "step_limit"
+FAILED = "integration_failed"
+LOOK_AHEAD = 1e-4  # tolerance of the look ahead, which only compares radii
+
+_buffers: dict[int, tuple[Array, Array]] = {}
+
+
+def _scratch(size: int) -> tuple[Array, Array]:
+    """Room for the explicit stage's steps, made once for each length of the state."""
+    if size not in _buffers:
+        _buffers[size] = np.empty(COLD_STEPS), np.empty((COLD_STEPS, size))
+    return _buffers[size]

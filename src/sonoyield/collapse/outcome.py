@@ -1,0 +1,127 @@
+"""How a run ended: one code, and a sentence that a person can act on."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import StrEnum
+
+import numpy as np
+
+from sonoyield.collapse.follow import FAILED, NO_MAXIMUM, PATIENCE, STEP_LIMIT
+from sonoyield.collapse.history import History
+from sonoyield.collapse.ledger import ENERGY_LIMIT, Balance
+from sonoyield.collapse.yields import Collapse
+
+MACH_LIMIT = 1.0  # of the sound speed in the liquid; Keller-Miksis is first order in it
+TRACE = 1e-3  # mole fraction below which a species' thermo range does not decide
+
+
+class Code(StrEnum):
+    """Codes of an outcome, from best to worst."""
+
+    OK = "ok"
+    NO_INERTIAL_COLLAPSE = "no_inertial_collapse"
+    OUT_OF_RANGE = "out_of_range"
+    NO_WINDOW = "no_window"
+    LEDGER_OPEN = "ledger_open"
+    STEP_LIMIT = "step_limit"
+    INTEGRATION_FAILED = "integration_failed"
+
+    @property
+    def has_numbers(self) -> bool:
+        """Whether the numbers of such a run may be shown."""
+        return self not in (Code.LEDGER_OPEN, Code.STEP_LIMIT, Code.INTEGRATION_FAILED)
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """Code and sentence."""
+
+    code: Code
+    sentence: str
+
+
+@dataclass(frozen=True)
+class BeyondThermo:
+    """A species' stay above the range of its thermo source: K, s, largest mole fraction there."""
+
+    species: str
+    limit_K: float
+    time_s: float
+    largest_fraction: float
+
+
+def outcome_of(history: History, collapse: Collapse, balance: Balance) -> Outcome:
+    """Judge a run; the first that applies, worst first."""
+    if history.stopped == STEP_LIMIT:
+        return Outcome(
+            Code.STEP_LIMIT,
+            "The integration took its limit of steps before the window was complete; no number is "
+            "given. Try a lower pressure or a larger bubble.",
+        )
+    if history.stopped == FAILED:
+        return Outcome(
+            Code.INTEGRATION_FAILED,
+            f"The integration failed at {history.times[-1]:.4g} s; no number is given. The "
+            "collapse is likely beyond this model: try a lower pressure.",
+        )
+    if not balance.closed:
+        return Outcome(
+            Code.LEDGER_OPEN,
+            f"Energy closes to {balance.energy_error:.1e} of the work (limit {ENERGY_LIMIT:.0e}) "
+            f"and elements to {balance.element_error:.1e}; no number is given.",
+        )
+    if history.stopped == NO_MAXIMUM and not history.windows:
+        return Outcome(
+            Code.NO_WINDOW,
+            f"No second main expansion came within {PATIENCE} periods, so the counts cover "
+            f"{history.times[-1]:.4g} s from rest instead of a whole window.",
+        )
+    return _judged_by_range(history, collapse)
+
+
+def beyond_thermo(history: History) -> list[BeyondThermo]:
+    """Species whose thermo source ends below the temperature the gas reached while they held
+    more than a trace of it."""
+    phase = history.bubble.phase
+    fractions = history.moles / history.moles.sum(axis=1, keepdims=True)
+    durations = np.gradient(history.times) if len(history.times) > 1 else np.zeros(1)
+    found = []
+    for k, name in enumerate(phase.species):
+        above = history.temperature > phase.source_limit[k]
+        if above.any() and fractions[above, k].max() > TRACE:
+            found.append(
+                BeyondThermo(
+                    name,
+                    float(phase.source_limit[k]),
+                    float(durations[above].sum()),
+                    float(fractions[above, k].max()),
+                )
+            )
+    return found
+
+
+def _judged_by_range(history: History, collapse: Collapse) -> Outcome:
+    mach = collapse.peak_wall_speed_m_s / history.bubble.liquid.sound_speed
+    if mach > MACH_LIMIT:
+        return Outcome(
+            Code.OUT_OF_RANGE,
+            f"The wall reaches {mach:.2f} times the liquid's sound speed, beyond the radial "
+            "equation's range (1); read temperatures and yields as orders of magnitude.",
+        )
+    beyond = beyond_thermo(history)
+    if beyond:
+        names = ", ".join(one.species for one in beyond)
+        return Outcome(
+            Code.OUT_OF_RANGE,
+            f"The gas reaches {collapse.peak_temperature_K:.0f} K, above the "
+            f"{min(one.limit_K for one in beyond):.0f} K where the thermo data of {names} end; "
+            "beyond it heat capacities are held, and yields carry that error.",
+        )
+    if not collapse.inertial:
+        return Outcome(
+            Code.NO_INERTIAL_COLLAPSE,
+            f"The bubble grows only {collapse.max_radius_m / history.bubble.radius:.2f}-fold and "
+            "does not collapse inertially (2-fold): raise the pressure or lower the frequency.",
+        )
+    return Outcome(Code.OK, "The bubble collapses inertially within the range of the model.")

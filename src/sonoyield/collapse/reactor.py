@@ -1,0 +1,194 @@
+"""The hot part of a cycle: wall motion, exchange and chemistry in one Cantera reactor network.
+
+The reactor is Cantera's ideal-gas mole reactor: it owns temperature, volume and amounts, sets the
+phase and calls the kinetics. Wall speed, what has crossed and the ledger join it as further states
+of the same implicit integrator, and its energy balance is replaced by ours (Noble-Abel, exchange).
+"""
+
+from __future__ import annotations
+
+from math import pi
+from typing import Any
+
+import cantera as ct
+import numpy as np
+from numba import njit
+
+from sonoyield.collapse import equations as eq
+from sonoyield.collapse.bubble import CONTENTS_FLOOR, Bubble
+from sonoyield.describe.gas import Array
+
+IntegrationError = ct.CanteraError
+
+KILO = 1e3  # mol in a kmol, Cantera's unit
+OWN = 2  # temperature and volume stand before the amounts in the reactor's state
+
+
+class HotStage:
+    """Steps the coupled bubble with Cantera's CVODES integrator from a given state.
+
+    ``time`` (s) and ``state`` (laid out as in ``equations``) are those of the last step.
+    """
+
+    def __init__(self, bubble: Bubble, relative: float) -> None:
+        self._bubble = bubble
+        self._relative = relative
+        self.time = 0.0
+        self.state = bubble.at_rest()
+        self._network: ct.ReactorNet | None = None
+        self.steps = 0
+        self.evaluations = 0
+
+    def begin(self, time: float, state: Array) -> None:
+        """Start the network anew from ``state`` at ``time``."""
+        reactor = _reactor(self._bubble, state)
+        network = ct.ReactorNet([reactor])
+        network.initial_time = time
+        network.rtol = self._relative
+        network.atol = self._relative * reactor.floor
+        network.max_time_step = 0.05 * self._bubble.period
+        network.max_err_test_fails = 20
+        network.max_steps = 100_000
+        self._reactor, self._network = reactor, network
+        self.time, self.state = time, state.copy()
+        self.steps = self.evaluations = 0
+
+    def step(self) -> None:
+        """Advance by one step of the integrator's own choice. Raises ``ct.CanteraError``."""
+        network = self._network
+        assert network is not None
+        self.time = network.step()
+        # Cantera ends a step by setting the reactor to the accepted solution.
+        self._reactor.unpack(self._reactor.trial, self.state)
+        self.steps += 1
+        self.evaluations = self._reactor.evaluations
+
+    def between(self, time: float) -> Array:
+        """State at a time inside the last step, by the integrator's own polynomial."""
+        network = self._network
+        assert network is not None
+        ago = time - self.time
+        value, factor = network.get_derivative(0), 1.0
+        for order in range(1, int(network.solver_stats["last_order"]) + 1):
+            factor *= ago / order
+            value = value + factor * network.get_derivative(order)
+        state = self.state.copy()
+        self._reactor.unpack(value, state)
+        return state
+
+
+class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
+    """Cantera's reactor with the bubble's wall, exchange and ledger added to its state."""
+
+    def prepare(self, bubble: Bubble, state: Array) -> None:
+        count = len(bubble.phase.species)
+        contents = float(bubble.moles.sum()) / KILO
+        self.floor = CONTENTS_FLOOR * contents
+        # The integrator takes one absolute tolerance: each added state is scaled to suit it.
+        self.scales = np.array(
+            [self.floor / bubble.speed_scale, self.floor / bubble.energy_scale]
+        )
+        self.crossing = bubble.crossing
+        self.base = OWN + count
+        self.tables = bubble.tables
+        self.evaluations = 0
+        self.production = np.zeros(count)
+        self.scratch = np.empty((eq.SCRATCH, count))
+        self.common = np.empty(eq.state_size(count))
+        self.slopes = np.empty(eq.state_size(count))
+        self.start = np.empty(self.base + 1 + len(self.crossing) + eq.LEDGER)
+        _pack(state, self.crossing, self.scales, count, self.start)
+
+    def after_initialize(self, t0: float) -> None:  # noqa: ARG002 - Cantera's signature
+        self.n_vars += len(self.start) - self.base
+
+    def after_get_state(self, y: Any) -> None:
+        np.asarray(y)[:] = self.start
+
+    def after_update_state(self, y: Any) -> None:
+        self.trial = np.asarray(y)
+
+    def after_eval(self, t: float, left: Any, right: Any) -> None:
+        self.evaluations += 1
+        _reactor_rates(
+            t, self.trial, np.asarray(left), np.asarray(right), self.crossing, self.scales,
+            self.production, self.common, self.slopes, self.scratch, *self.tables,
+        )
+
+    def before_component_name(self, i: int) -> str | None:
+        return f"bubble state {i - self.base}" if i >= self.base else None
+
+    def unpack(self, y: Array, state: Array) -> None:
+        _unpack(y, self.crossing, self.scales, len(self.production), state)
+
+
+def _reactor(bubble: Bubble, state: Array) -> _BubbleReactor:
+    gas = bubble.phase.solution()
+    count = len(bubble.phase.species)
+    moles = state[eq.MOLES : eq.MOLES + count]
+    volume = 4.0 / 3.0 * pi * state[eq.RADIUS] ** 3
+    density = float(moles @ bubble.phase.molar_mass) / volume
+    gas.TDX = state[eq.TEMPERATURE], density, np.maximum(moles, 0.0)
+    reactor = _BubbleReactor(gas, clone=False)
+    reactor.volume = volume
+    reactor.prepare(bubble, state)
+    return reactor
+
+
+@njit(cache=True)
+def _pack(state: Array, crossing: Any, scales: Array, count: int, y: Array) -> None:
+    y[0] = state[eq.TEMPERATURE]
+    y[1] = 4.0 / 3.0 * pi * state[eq.RADIUS] ** 3
+    for k in range(count):
+        y[OWN + k] = state[eq.MOLES + k] / KILO
+    at = OWN + count
+    y[at] = state[eq.SPEED] * scales[0]
+    for c in range(crossing.size):
+        y[at + 1 + c] = state[eq.MOLES + count + crossing[c]] / KILO
+    at += 1 + crossing.size
+    for i in range(eq.LEDGER):
+        y[at + i] = state[eq.MOLES + 2 * count + i] * scales[1]
+
+
+@njit(cache=True)
+def _unpack(y: Array, crossing: Any, scales: Array, count: int, state: Array) -> None:
+    state[eq.TEMPERATURE] = y[0]
+    state[eq.RADIUS] = (y[1] / (4.0 / 3.0 * pi)) ** (1.0 / 3.0) if y[1] > 0.0 else 0.0
+    for k in range(count):
+        state[eq.MOLES + k] = y[OWN + k] * KILO
+    at = OWN + count
+    state[eq.SPEED] = y[at] / scales[0]
+    for c in range(crossing.size):
+        state[eq.MOLES + count + crossing[c]] = y[at + 1 + c] * KILO
+    at += 1 + crossing.size
+    for i in range(eq.LEDGER):
+        state[eq.MOLES + 2 * count + i] = y[at + i] / scales[1]
+
+
+@njit(cache=True)
+def _reactor_rates(
+    time: float, y: Array, left: Array, right: Array, crossing: Any, scales: Array,
+    production: Array, state: Array, slopes: Array, scratch: Array, constants: Array,
+    species: Array, nasa: Array, conductivity: Array, diffusivity: Array,
+) -> None:
+    """Turn Cantera's production (kmol/s, in ``right``) into the whole right-hand side."""
+    count = production.size
+    for k in range(count):
+        production[k] = right[OWN + k] * KILO
+    _unpack(y, crossing, scales, count, state)
+    eq.rates(
+        time, state, production, constants, species, nasa, conductivity, diffusivity,
+        scratch, slopes,
+    )
+    left[0] = 1.0
+    right[0] = slopes[eq.TEMPERATURE]
+    right[1] = 4.0 * pi * state[eq.RADIUS] ** 2 * state[eq.SPEED]
+    for k in range(count):
+        right[OWN + k] = slopes[eq.MOLES + k] / KILO
+    at = OWN + count
+    right[at] = slopes[eq.SPEED] * scales[0]
+    for c in range(crossing.size):
+        right[at + 1 + c] = slopes[eq.MOLES + count + crossing[c]] / KILO
+    at += 1 + crossing.size
+    for i in range(eq.LEDGER):
+        right[at + i] = slopes[eq.MOLES + 2 * count + i] * scales[1]

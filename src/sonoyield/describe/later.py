@@ -1,0 +1,56 @@
+"""Sentences for what the protocol format names and this version does not have."""
+
+from __future__ import annotations
+
+LATER_KEYS: dict[str, str] = {
+    "drive.second": "a second drive tone is not in this version",
+    "drive.intensity": "a drive given as intensity is not in this version; give drive.pressure",
+    "gas.dissolved": "gas dissolved in the liquid is not in this version",
+    "bubbles.sizes": "a spread of bubble sizes is not in this version; give bubbles.radius",
+    "bubbles.power_density": (
+        "bubble numbers from a power density are not in this version; give bubbles.number_density"
+    ),
+    "bubbles.calibration": (
+        "bubble numbers from a calibration are not in this version; give bubbles.number_density"
+    ),
+    "liquid.scavengers": "scavengers in the liquid are not in this version",
+    "dosimeter": "dosimeter readings are not in this version",
+    "uncertainty": "uncertainty of the inputs is not in this version",
+}
+
+LATER_FIELDS: dict[str, str] = {
+    kind: f"a {kind.replace('_', ' ')} pressure field is not in this version"
+    for kind in ("standing_wave", "focal_beam", "histogram")
+}
+
+LATER_RADIAL = {"gilmore": "the Gilmore equation is not in this version"}
+
+LATER_INTERIOR = {"resolved": "the resolved interior of the bubble is not in this version"}
+
+MECHANISM_PATH = "a mechanism of your own is not in this version"
+
+PERIODIC = "following the bubble to a periodic state is not in this version"
+
+NITROGEN = (
+    "nitrogen chemistry is not in this version's mechanism and nitrogen is never treated as inert"
+)
+
+_OTHER_GASES = {
+    "hydrogen": ("hydrogen", "h2"),
+    "ozone": ("ozone", "o3"),
+    "carbon dioxide": ("carbon dioxide", "carbon_dioxide", "co2"),
+    "methane": ("methane", "ch4"),
+}
+
+LATER_GASES: dict[str, str] = {
+    **dict.fromkeys(("air", "nitrogen", "n2"), NITROGEN),
+    **{
+        name: f"{gas} as the gas at rest is not in this version"
+        for gas, names in _OTHER_GASES.items()
+        for name in names
+    },
+}
+
+LATER_SPECIES = frozenset(
+    ("N", "NH", "NH2", "NH3", "NNH", "NO", "NO2", "NO3", "N2O", "HNO", "HONO", "HONO2")
+)

@@ -1,0 +1,74 @@
+"""Rules between the fields of one protocol; each refusal names the key it blames."""
+
+from __future__ import annotations
+
+import math
+from typing import TYPE_CHECKING
+
+from sonoyield.describe.errors import RefusalError
+from sonoyield.describe.liquid import liquid_state
+from sonoyield.describe.units import DIMENSIONS, format_quantity
+
+if TYPE_CHECKING:
+    from sonoyield.describe.protocol import Protocol
+
+LARGEST_GAS_SHARE = 0.1  # of the liquid's volume; above it bubbles do not act one by one
+ROUNDING = 1e-9  # equal times written in different units stay equal
+
+
+def check_rules(protocol: Protocol) -> None:
+    """Refuse a protocol whose fields contradict each other.
+
+    Raises ``RefusalError`` with the dotted key of the field to change.
+    """
+    _check_times(protocol)
+    _check_boiling(protocol)
+    _check_filling(protocol)
+
+
+def _check_times(protocol: Protocol) -> None:
+    period = 1.0 / protocol.drive.frequency
+    schedule = protocol.schedule
+    shortest = f"at least one acoustic period, {_time(period)}"
+    if schedule.duration < period * (1 - ROUNDING):
+        raise RefusalError("shorter than one acoustic period", shortest, "schedule.duration")
+    pulse = schedule.pulse
+    if pulse is None:
+        return
+    if pulse.length < period * (1 - ROUNDING):
+        raise RefusalError("shorter than one acoustic period", shortest, "schedule.pulse.length")
+    if pulse.length > pulse.every * (1 + ROUNDING):
+        allowed = f"at most schedule.pulse.every, {_time(pulse.every)}"
+        raise RefusalError(
+            "a pulse is longer than its repetition", allowed, "schedule.pulse.length"
+        )
+    if schedule.duration < pulse.every * (1 - ROUNDING):
+        allowed = f"at least schedule.pulse.every, {_time(pulse.every)}"
+        raise RefusalError("shorter than one pulse repetition", allowed, "schedule.duration")
+
+
+def _check_boiling(protocol: Protocol) -> None:
+    liquid = protocol.liquid
+    vapour = liquid_state(liquid.kind, liquid.temperature, liquid.salinity).saturation_pressure
+    if vapour >= liquid.ambient_pressure:
+        boiling = format_quantity(vapour, DIMENSIONS["ambient"])
+        ambient = format_quantity(liquid.ambient_pressure, DIMENSIONS["ambient"])
+        problem = f"the liquid would boil at rest under {ambient}"
+        allowed = f"a temperature whose vapour pressure, here {boiling}, is below the ambient one"
+        raise RefusalError(problem, allowed, "liquid.temperature")
+
+
+def _check_filling(protocol: Protocol) -> None:
+    bubble = 4.0 / 3.0 * math.pi * protocol.bubbles.radius**3
+    share = protocol.bubbles.number_density * bubble
+    if share > LARGEST_GAS_SHARE:
+        most = LARGEST_GAS_SHARE / bubble
+        raise RefusalError(
+            f"bubbles of this radius would fill {share:.3g} of the liquid's volume",
+            f"at most {LARGEST_GAS_SHARE:g} of it, that is {most:.3g} / m^3",
+            "bubbles.number_density",
+        )
+
+
+def _time(seconds: float) -> str:
+    return format_quantity(seconds, DIMENSIONS["time"])

@@ -1,0 +1,1 @@
+"""Many bubbles and much time: from one collapse to an exposure."""

@@ -1,0 +1,1 @@
+"""What the user sees: tables and files, read from results only."""

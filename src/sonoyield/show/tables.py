@@ -1,0 +1,177 @@
+"""An estimate as tables on the terminal."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+from rich.console import Console
+from rich.table import Table
+
+if TYPE_CHECKING:
+    from sonoyield.expose.estimate import Estimate
+
+CAUTIONS = (
+    "Research estimate, never a treatment prescription. Intense ultrasound heats and destroys "
+    "tissue; compressed gases burst and asphyxiate. Follow local codes and licensed practice.",
+)
+MECHANICAL_INDEX_LIMIT = 1.9  # FDA 510(k) guidance, Track 3, general diagnostic limit
+
+
+def print_estimate(result: Estimate, console: Console) -> None:
+    """Print what was assumed, the collapse, the counts and the exposure."""
+    console.print(f"[bold]{result.protocol.title or 'Untitled exposure'}[/bold]")
+    console.print(f"Outcome: {result.outcome.code} - {result.outcome.sentence}\n")
+    console.print(_assumed(result))
+    if result.counts is not None:
+        console.print(_collapse(result))
+        console.print(_counts(result))
+        console.print(_exposure(result))
+    console.print(_closure(result))
+    if result.coupling_difference is not None:
+        console.print(_difference(result))
+    for warning in result.warnings:
+        console.print(f"Warning: {warning}")
+    console.print(f"\n{_mechanical_index(result)}")
+    for caution in CAUTIONS:
+        console.print(f"Caution: {caution}")
+
+
+def number(value: float | None, digits: int = 3) -> str:
+    """A number for a table, ``-`` where there is none."""
+    if value is None:
+        return "-"
+    return f"{value:.{digits}g}"
+
+
+def _table(title: str, *columns: str) -> Table:
+    table = Table(title=title, title_justify="left", title_style="bold", expand=False)
+    for i, column in enumerate(columns):
+        table.add_column(column, justify="left" if i == 0 else "right")
+    return table
+
+
+def _assumed(result: Estimate) -> Table:
+    protocol, liquid, bubble = result.protocol, result.liquid, result.history.bubble
+    model = protocol.model
+    mixture = ", ".join(f"{100 * share:.4g} % {name}" for name, share in bubble.mixture.items())
+    pulse = protocol.schedule.pulse
+    shares = ", ".join(f"{name} {value:g}" for name, value in bubble.accommodation.items())
+    table = _table("Assumed", "what", "value")
+    for what, value in (
+        ("sound", f"{bubble.frequency / 1e3:.5g} kHz, {bubble.pressure_amplitude / 1e5:.4g} bar "
+                  "amplitude, sine, rarefaction first"),
+        ("schedule", f"{protocol.schedule.duration:.4g} s, " + (
+            "continuous" if pulse is None
+            else f"{pulse.length:.4g} s pulses every {pulse.every:.4g} s")),
+        ("liquid", f"{protocol.liquid.kind}, {liquid.temperature - 273.15:.4g} degC, "
+                   f"{protocol.liquid.ambient_pressure / 1e5:.5g} bar ambient, "
+                   f"{protocol.liquid.volume * 1e3:.4g} L insonated"),
+        ("bubble at rest", f"{bubble.radius * 1e6:.4g} um, {mixture} (dry), saturated vapour"
+                           if model.vapour else f"{bubble.radius * 1e6:.4g} um, {mixture}, dry"),
+        ("bubbles", f"{protocol.bubbles.number_density:.4g} per m3, all alike, uniform field"),
+        ("motion", "Keller-Miksis, spherical"),
+        ("gas", "well mixed, one temperature; Noble-Abel" if model.excluded_volume
+                else "well mixed, one temperature; ideal"),
+        ("chemistry", f"{bubble.phase.name}, {len(bubble.phase.species)} species, "
+                      f"{model.coupling} coupling"),
+        ("uptake by the liquid", "radicals and O3 held at zero at the wall (upper bound for H, O, "
+                                 "O3)" if model.uptake else "none"),
+        ("accommodation", shares),
+    ):  # fmt: skip
+        table.add_row(what, value)
+    return table
+
+
+def _collapse(result: Estimate) -> Table:
+    collapse = result.collapse
+    assert collapse is not None
+    mach = collapse.peak_wall_speed_m_s / result.liquid.sound_speed
+    table = _table("Collapse", "what", "value", "unit")
+    for what, value, unit in (
+        ("peak temperature", f"{collapse.peak_temperature_K:.0f}", "K"),
+        ("peak pressure", number(collapse.peak_pressure_Pa / 1e5), "bar"),
+        ("largest radius", number(collapse.max_radius_m * 1e6, 4), "um"),
+        ("smallest radius", number(collapse.min_radius_m * 1e6), "um"),
+        ("volume compression", number(collapse.compression_ratio), "-"),
+        ("time of peak", number(collapse.time_of_peak_s * 1e6, 5), "us"),
+        ("peak wall speed", f"{collapse.peak_wall_speed_m_s:.0f} (Mach {mach:.2f})", "m/s"),
+        ("vapour at peak", number(100 * collapse.vapour_fraction_at_peak), "mol %"),
+        ("inertial (2-fold growth)", "yes" if collapse.inertial else "no", "-"),
+    ):
+        table.add_row(what, value, unit)
+    return table
+
+
+def _counts(result: Estimate) -> Table:
+    assert result.counts is not None
+    table = _table(
+        "Molecules per collapse", "species", "peak in gas", "delivered to liquid", "left in gas"
+    )
+    for name, count in result.counts.items():
+        table.add_row(name, number(count.peak), number(count.delivered), number(count.left))
+    return table
+
+
+def _exposure(result: Estimate) -> Table:
+    assert result.doses is not None
+    assert result.oxidant is not None
+    assert result.driven is not None
+    driven = result.driven
+    table = _table(
+        f"Per exposure ({number(driven.per_second)} collapses per second and bubble)",
+        "delivered", "mol", "umol/L", "umol/L/min", "umol/L/min while on", "mol/J dissipated",
+    )  # fmt: skip
+    for name, dose in {**result.doses, "oxidant": result.oxidant}.items():
+        table.add_row(
+            name,
+            number(dose.mol),
+            number(1e6 * dose.mol_per_L),
+            number(60e6 * dose.mol_per_L_per_s),
+            number(60e6 * dose.mol_per_L_per_s_on),
+            number(dose.mol_per_J),
+        )
+    from sonoyield.collapse.yields import OXIDANT_FORMULA
+
+    table.caption = (
+        f"oxidant = {OXIDANT_FORMULA}; NOx not counted. Delivered is not what a dosimeter reads: "
+        "most radicals meet each other first. Bubble numbers are yours and scale every line."
+    )
+    return table
+
+
+def _closure(result: Estimate) -> Table:
+    balance, energy = result.balance, result.energy
+    table = _table("Energy of one window", "term", "J")
+    if energy is not None:
+        for term in ("work", "viscous", "radiation", "radiation_far_field", "heat", "carried",
+                     "stored", "residual"):  # fmt: skip
+            table.add_row(term.replace("_", " "), number(getattr(energy, term)))
+    table.caption = (
+        f"closed to {balance.energy_error:.1e} of the work, elements to "
+        f"{balance.element_error:.1e}; zero of enthalpy: liquid water, O2 and noble gases at the "
+        "liquid's temperature"
+    )
+    return table
+
+
+def _difference(result: Estimate) -> Table:
+    difference = result.coupling_difference
+    assert difference is not None
+    other = difference["other"]
+    table = _table(
+        "Couplings", "what", result.protocol.model.coupling, other, f"{other} / this"
+    )
+    for key, pair in difference.items():
+        if isinstance(pair, dict):
+            table.add_row(key, *(number(pair[k], 4) for k in ("this", "other", "ratio")))
+    return table
+
+
+def _mechanical_index(result: Estimate) -> str:
+    index = result.mechanical_index
+    if index is None:
+        return "Mechanical index: not defined at this frequency (0.5 to 15 MHz)."
+    return (
+        f"Mechanical index: {index:.2f}, the drive pressure taken as the derated peak negative one "
+        f"(usual diagnostic limit {MECHANICAL_INDEX_LIMIT}); no statement that anything is safe."
+    )
