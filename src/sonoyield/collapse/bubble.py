@@ -189,7 +189,7 @@ class Bubble:
             return self.accommodation["water"] if self.vapour else None
         if name not in ABSORBED or not self.uptake:
             return None
-        return self.accommodation.get(name, self.accommodation["radicals"])
+        return self.accommodation[name if name in self.accommodation else "radicals"]
 
 
 CONTENTS_FLOOR = 1e-4  # of the contents; times the relative tolerance it is a part of a molecule

@@ -20,7 +20,7 @@ END, MAXIMUM, WARM, STIFF, FAILED = range(5)
 _SMALLEST = 1e-14  # of the period: a step below this cannot be taken
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def integrate_frozen(
     start: float,
     stop: float,
@@ -92,7 +92,7 @@ def integrate_frozen(
     return STIFF, recorded, step
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _attempt(
     time: float, step: float, state: Array, relative: float, absolute: Array, production: Array,
     constants: Array, species: Array, nasa: Array, conductivity: Array, diffusivity: Array,
@@ -122,7 +122,7 @@ def _attempt(
     return worst
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _land_on_crest(
     time: float, step: float, state: Array, relative: float, absolute: Array, production: Array,
     constants: Array, species: Array, nasa: Array, conductivity: Array, diffusivity: Array,

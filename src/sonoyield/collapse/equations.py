@@ -59,7 +59,7 @@ def state_size(species: int) -> int:
     return MOLES + 2 * species + LEDGER
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def gas_pressure(radius: float, temperature: float, moles: Array, species: Array) -> float:
     """Pressure of the Noble-Abel gas, Pa; not positive where the covolumes do not fit."""
     free = 4.0 / 3.0 * pi * radius**3
@@ -70,7 +70,7 @@ def gas_pressure(radius: float, temperature: float, moles: Array, species: Array
     return total * GAS_CONSTANT * temperature / free
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def rates(
     time: float,
     state: Array,
@@ -184,7 +184,7 @@ def rates(
     ledger[FAR_FIELD] = density * bulge * bulge / (4.0 * pi * constants[SOUND_SPEED])
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def stored_energy(
     state: Array, count: int, constants: Array, nasa: Array, scratch: Array
 ) -> float:

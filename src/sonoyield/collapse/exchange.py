@@ -18,7 +18,7 @@ from sonoyield.describe.gas import Array
 MASS, COVOLUME, SURFACE, EQUILIBRIUM, ENTHALPY_AT_LIQUID, CROSSES = range(6)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def layer_thickness(radius: float, speed: float, diffusivity: float) -> float:
     """Thickness of the boundary layer in the gas, m."""
     thickest = radius / pi
@@ -27,7 +27,7 @@ def layer_thickness(radius: float, speed: float, diffusivity: float) -> float:
     return sqrt(radius * diffusivity / abs(speed))
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def species_flow(
     radius: float,
     speed: float,
@@ -48,7 +48,8 @@ def species_flow(
     """
     area = 4.0 * pi * radius * radius
     for k in range(moles.size):
-        if species[k, CROSSES] == 0.0:
+        absent = moles[k] == 0.0 and species[k, EQUILIBRIUM] == 0.0
+        if absent or species[k, CROSSES] == 0.0:
             flow[k] = 0.0
             continue
         d = mixture_diffusivity(

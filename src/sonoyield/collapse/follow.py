@@ -10,6 +10,7 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 
 import numpy as np
+from numba import njit
 
 from sonoyield.collapse import cold
 from sonoyield.collapse import equations as eq
@@ -19,15 +20,16 @@ from sonoyield.collapse.ledger import balance
 from sonoyield.collapse.reactor import HotStage, IntegrationError
 from sonoyield.describe.gas import ABSORBED, Array
 
-# Above these the reactor takes over: steam, oxygen and noble gases alone make fewer than 1e-9 of
-# the contents into radicals while they are compressed to 1500 K; hydrogen left by an earlier
-# collapse or the remains of radicals may react sooner.
-WARM_FRESH, WARM_USED = 1500.0, 1000.0  # K
+# Above these temperatures the reactor takes over. In gas fresh from rest (steam, oxygen, noble
+# gases) 1e-9 of the contents at most become radicals on the way to 2000 K; that matters only to a
+# collapse that ends below WEAK, which is then run again. Hydrogen and the remains of radicals left
+# by an earlier collapse may react sooner.
+WARM_FRESH, WARM_USED, WEAK = 2000.0, 1000.0, 3000.0  # K
 # The reactor lets go of colder gas when the radicals left in it are at most this share of those
 # delivered so far (which bounds what freezing them can change), or of the contents.
 QUIET_DELIVERED, QUIET_CONTENTS = 1e-4, 1e-9
 PATIENCE = 2.5  # periods without a main maximum before the run ends
-COLD_SHARE, HOT_SHARE = 0.1, 0.3  # of the tolerance asked for, so that the ledger closes
+COLD_SHARE = 0.1  # of the tolerance asked for: it costs little there and closes the ledger
 COLD_STEPS = 20_000  # accepted steps of the explicit stage before it counts as stiff
 
 
@@ -53,17 +55,23 @@ def follow(bubble: Bubble, collapses: int = 1, accuracy: Accuracy | None = None)
     periods, at the step limit, or where the integration fails.
     """
     accuracy = accuracy or Accuracy()
-    history = _Run(bubble, collapses, accuracy).complete()
+    warm = WARM_FRESH
+    history = _Run(bubble, collapses, accuracy, warm).complete()
+    if WARM_USED < history.temperature.max() < WEAK:
+        warm = WARM_USED
+        history = _Run(bubble, collapses, accuracy, warm).complete()
     for _ in range(accuracy.tighten):
         if history.stopped in (STEP_LIMIT, FAILED) or balance(history).closed:
             break
         accuracy = replace(accuracy, relative=0.1 * accuracy.relative)
-        history = _Run(bubble, collapses, accuracy).complete()
+        history = _Run(bubble, collapses, accuracy, warm).complete()
     return history
 
 
 class _Run:
-    def __init__(self, bubble: Bubble, collapses: int, accuracy: Accuracy) -> None:
+    def __init__(
+        self, bubble: Bubble, collapses: int, accuracy: Accuracy, warm: float = WARM_FRESH
+    ) -> None:
         self.bubble, self.accuracy = bubble, accuracy
         self.wanted = collapses + 2  # marks: rest, the first main maximum, one a window
         self.relative = COLD_SHARE * accuracy.relative
@@ -74,10 +82,10 @@ class _Run:
         self.crests: list[tuple[float, float]] = []
         self.step = 1e-4 * bubble.period
         self.implicit_only = not accuracy.split
-        self.hot = HotStage(bubble, HOT_SHARE * accuracy.relative)
+        self.hot = HotStage(bubble, accuracy.relative)
         self.counters = dict.fromkeys(("cold_steps", "hot_steps", "evaluations", "stages"), 0)
         self.radicals = eq.MOLES + np.array([bubble.phase.index(name) for name in ABSORBED])
-        self.warm = WARM_FRESH
+        self.warm = warm
         self.few = QUIET_CONTENTS * float(bubble.moles.sum())
 
     def complete(self) -> History:
@@ -94,13 +102,10 @@ class _Run:
         return float(self.record.times[self.marks[-1]]) + PATIENCE * self.bubble.period
 
     def _reactive(self) -> bool:
-        state, count = self.state, len(self.bubble.phase.species)
-        if self.implicit_only or state[eq.TEMPERATURE] > self.warm:
+        if self.implicit_only or self.state[eq.TEMPERATURE] > self.warm:
             return True
-        left = state[self.radicals].sum()
-        if left <= self.few:
-            return False
-        return bool(left > QUIET_DELIVERED * state[self.radicals + count].sum())
+        left, delivered = _totals(self.state, self.radicals, len(self.bubble.phase.species))
+        return bool(left > max(self.few, QUIET_DELIVERED * delivered))
 
     def _cold(self) -> str:
         times, states = _scratch(len(self.state))
@@ -167,12 +172,24 @@ class _Run:
         self._crest(high, state, self.record.last)
 
     def _crest(self, time: float, state: Array, row: int) -> None:
+        """Take a maximum of the radius as a mark, unless a larger radius is too near."""
         radius = float(state[eq.RADIUS])
         half = 0.5 * self.bubble.period
+        self._drop_outgrown_mark(half)
         larger = any(when > time - half and r > radius for when, r in self.crests)
         self.crests.append((time, radius))
-        if not larger and not self._outgrown(time, state):
+        ends = len(self.marks) + 1 == self.wanted
+        if not larger and not (ends and self._outgrown(time, state)):
             self.marks.append(row)
+
+    def _drop_outgrown_mark(self, half: float) -> None:
+        """Unmark the last maximum where the radius has grown larger within half a period."""
+        row, size = self.marks[-1], self.record.size
+        if row == 0:
+            return
+        times, radii = self.record.times[row:size], self.record.states[row:size, eq.RADIUS]
+        if radii[times <= times[0] + half].max() > radii[0] * (1.0 + LOOK_AHEAD):
+            self.marks.pop()
 
     def _outgrown(self, time: float, state: Array) -> bool:
         """Whether the radius grows larger within half a period, by a quick frozen look ahead."""
@@ -198,6 +215,18 @@ NO_MAXIMUM = "no_maximum"
 STEP_LIMIT = "step_limit"
 FAILED = "integration_failed"
 LOOK_AHEAD = 1e-4  # tolerance of the look ahead, which only compares radii
+
+
+@njit(cache=True, error_model="numpy")
+def _totals(state: Array, radicals: Array, count: int) -> tuple[float, float]:
+    """Radicals in the gas and delivered so far, mol."""
+    left = 0.0
+    delivered = 0.0
+    for row in radicals:
+        left += state[row]
+        delivered += state[row + count]
+    return left, delivered
+
 
 _buffers: dict[int, tuple[Array, Array]] = {}
 

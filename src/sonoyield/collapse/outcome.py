@@ -71,7 +71,7 @@ def outcome_of(history: History, collapse: Collapse, balance: Balance) -> Outcom
             f"Energy closes to {balance.energy_error:.1e} of the work (limit {ENERGY_LIMIT:.0e}) "
             f"and elements to {balance.element_error:.1e}; no number is given.",
         )
-    if history.stopped == NO_MAXIMUM and not history.windows:
+    if history.stopped == NO_MAXIMUM and not history.windows and collapse.inertial:
         return Outcome(
             Code.NO_WINDOW,
             f"No second main expansion came within {PATIENCE} periods, so the counts cover "

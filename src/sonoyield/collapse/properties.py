@@ -14,11 +14,12 @@ from numba import njit
 
 from sonoyield.describe.gas import GAS_CONSTANT, Array
 
-COLDEST = 200.0  # K, lowest temperature of the polynomials
+COLDEST = 200.0  # K, lowest temperature of the thermo polynomials
+COLDEST_TRANSPORT = 100.0  # K; the transport fits, made from 200 K up, are smooth down to here
 LOW, HIGH = 9, 10  # columns of an interval's bounds
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def heat_capacity_and_enthalpy(
     temperature: float, nasa: Array, capacity: Array, enthalpy: Array
 ) -> None:
@@ -43,7 +44,7 @@ def heat_capacity_and_enthalpy(
         enthalpy[k] = h * GAS_CONSTANT * t + capacity[k] * (temperature - t)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def steam_conductivity(temperature: float) -> float:
     """Conductivity of dilute steam, W/m/K, from ``temperature`` in K.
 
@@ -56,17 +57,17 @@ def steam_conductivity(temperature: float) -> float:
     return 1e-3 / (sqrt(r) * series)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def transport_logarithm(temperature: float, top: float) -> float:
-    """Argument of the transport polynomials, ln(T/K), held at the ends of their range.
+    """Argument of the transport polynomials, ln(T/K), held below 100 K and above ``top``.
 
-    Beyond them conductivity goes on as T^0.5 and diffusivity as T^1.5, a little slower than
+    Beyond those conductivity goes on as T^0.5 and diffusivity as T^1.5, a little slower than
     kinetic theory (8 % at 12 000 K), where the polynomials themselves would run away.
     """
-    return log(min(max(temperature, COLDEST), top))
+    return log(min(max(temperature, COLDEST_TRANSPORT), top))
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def mixture_conductivity(
     temperature: float, u: float, x: Array, conductivity: Array, water: int
 ) -> float:
@@ -91,7 +92,7 @@ def mixture_conductivity(
     return 0.5 * (arithmetic + 1.0 / harmonic)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def mixture_diffusivity(
     k: int,
     temperature: float,

@@ -8,7 +8,7 @@ from __future__ import annotations
 from numba import njit
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def keller_miksis(
     radius: float,
     speed: float,

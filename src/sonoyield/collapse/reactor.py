@@ -7,6 +7,7 @@ of the same implicit integrator, and its energy balance is replaced by ours (Nob
 
 from __future__ import annotations
 
+from functools import partial
 from math import pi
 from typing import Any
 
@@ -88,16 +89,17 @@ class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
         self.scales = np.array(
             [self.floor / bubble.speed_scale, self.floor / bubble.energy_scale]
         )
-        self.crossing = bubble.crossing
         self.base = OWN + count
-        self.tables = bubble.tables
+        self.energy_enabled = False  # the energy balance is ours
         self.evaluations = 0
-        self.production = np.zeros(count)
-        self.scratch = np.empty((eq.SCRATCH, count))
-        self.common = np.empty(eq.state_size(count))
-        self.slopes = np.empty(eq.state_size(count))
-        self.start = np.empty(self.base + 1 + len(self.crossing) + eq.LEDGER)
-        _pack(state, self.crossing, self.scales, count, self.start)
+        self.start = np.empty(self.base + 1 + len(bubble.crossing) + eq.LEDGER)
+        _pack(state, bubble.crossing, self.scales, count, self.start)
+        self._unpack = partial(_unpack, bubble.crossing, self.scales, count)
+        self._fill = partial(
+            _reactor_rates, bubble.crossing, self.scales, np.zeros(count),
+            np.empty(eq.state_size(count)), np.empty(eq.state_size(count)),
+            np.empty((eq.SCRATCH, count)), *bubble.tables,
+        )  # fmt: skip
 
     def after_initialize(self, t0: float) -> None:  # noqa: ARG002 - Cantera's signature
         self.n_vars += len(self.start) - self.base
@@ -110,16 +112,13 @@ class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
 
     def after_eval(self, t: float, left: Any, right: Any) -> None:
         self.evaluations += 1
-        _reactor_rates(
-            t, self.trial, np.asarray(left), np.asarray(right), self.crossing, self.scales,
-            self.production, self.common, self.slopes, self.scratch, *self.tables,
-        )
+        self._fill(t, self.trial, np.asarray(left), np.asarray(right))
 
     def before_component_name(self, i: int) -> str | None:
         return f"bubble state {i - self.base}" if i >= self.base else None
 
     def unpack(self, y: Array, state: Array) -> None:
-        _unpack(y, self.crossing, self.scales, len(self.production), state)
+        self._unpack(y, state)
 
 
 def _reactor(bubble: Bubble, state: Array) -> _BubbleReactor:
@@ -135,7 +134,7 @@ def _reactor(bubble: Bubble, state: Array) -> _BubbleReactor:
     return reactor
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _pack(state: Array, crossing: Any, scales: Array, count: int, y: Array) -> None:
     y[0] = state[eq.TEMPERATURE]
     y[1] = 4.0 / 3.0 * pi * state[eq.RADIUS] ** 3
@@ -150,8 +149,8 @@ def _pack(state: Array, crossing: Any, scales: Array, count: int, y: Array) -> N
         y[at + i] = state[eq.MOLES + 2 * count + i] * scales[1]
 
 
-@njit(cache=True)
-def _unpack(y: Array, crossing: Any, scales: Array, count: int, state: Array) -> None:
+@njit(cache=True, error_model="numpy")
+def _unpack(crossing: Any, scales: Array, count: int, y: Array, state: Array) -> None:
     state[eq.TEMPERATURE] = y[0]
     state[eq.RADIUS] = (y[1] / (4.0 / 3.0 * pi)) ** (1.0 / 3.0) if y[1] > 0.0 else 0.0
     for k in range(count):
@@ -165,17 +164,17 @@ def _unpack(y: Array, crossing: Any, scales: Array, count: int, state: Array) ->
         state[eq.MOLES + 2 * count + i] = y[at + i] / scales[1]
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _reactor_rates(
-    time: float, y: Array, left: Array, right: Array, crossing: Any, scales: Array,
-    production: Array, state: Array, slopes: Array, scratch: Array, constants: Array,
-    species: Array, nasa: Array, conductivity: Array, diffusivity: Array,
+    crossing: Any, scales: Array, production: Array, state: Array, slopes: Array, scratch: Array,
+    constants: Array, species: Array, nasa: Array, conductivity: Array, diffusivity: Array,
+    time: float, y: Array, left: Array, right: Array,
 ) -> None:
     """Turn Cantera's production (kmol/s, in ``right``) into the whole right-hand side."""
     count = production.size
     for k in range(count):
         production[k] = right[OWN + k] * KILO
-    _unpack(y, crossing, scales, count, state)
+    _unpack(crossing, scales, count, y, state)
     eq.rates(
         time, state, production, constants, species, nasa, conductivity, diffusivity,
         scratch, slopes,

@@ -76,9 +76,7 @@ def blake_threshold(
     p0 - pv + 4 sigma / (3 Rc) with the critical radius Rc; Blake 1949, as in Brennen 1995.
     Quasi-static: frequency far below resonance, radii up to some 20 um.
     """
-    critical = blake_critical_radius(
-        radius, ambient_pressure, surface_tension, saturation_pressure
-    )
+    critical = blake_critical_radius(radius, ambient_pressure, surface_tension, saturation_pressure)
     return ambient_pressure - saturation_pressure + 4.0 * surface_tension / (3.0 * critical)
 
 

@@ -7,6 +7,7 @@ enthalpies, transport, covolumes) is read out of the loaded phase and compared w
 from __future__ import annotations
 
 import hashlib
+from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import lru_cache
 from importlib import resources
@@ -24,6 +25,8 @@ Array = NDArray[np.float64]
 GAS_CONSTANT = 8.31446261815324  # J/mol/K, exact (SI 2019)
 AVOGADRO = 6.02214076e23  # 1/mol, exact (SI 2019)
 
+# Noble gases, which react with nothing.
+NOBLE = ("AR", "HE", "KR", "XE")
 # Species that the liquid takes up; the well-mixed gas holds them at zero at the wall.
 ABSORBED = ("OH", "H", "O", "HO2", "H2O2", "O3")
 
@@ -39,6 +42,7 @@ class GasPhase:
     """
 
     name: str
+    phase: str
     path: str
     sha256: str
     species: tuple[str, ...]
@@ -54,7 +58,7 @@ class GasPhase:
 
     def solution(self) -> ct.Solution:
         """The Cantera phase of this mechanism, loaded once in each process."""
-        return _solution(self.path)
+        return _solution(self.path, self.phase)
 
     def index(self, species: str) -> int:
         """Position of a species in the phase's order."""
@@ -62,19 +66,22 @@ class GasPhase:
 
 
 @lru_cache(maxsize=8)
-def load_phase(mechanism: str) -> GasPhase:
+def load_phase(mechanism: str, noble: str | None = None) -> GasPhase:
     """Load a mechanism shipped with the package by its name (``"h2o_o2"``).
 
-    Raises ``FileNotFoundError`` when there is no such file.
+    With ``noble`` (``"AR"`` ...) its phase without the other noble gases, which react with nothing
+    and cost time. Raises ``FileNotFoundError`` when there is no such file.
     """
     path = mechanism_path(mechanism)
-    gas = _solution(str(path))
+    phase = f"gas-{noble}" if noble else "gas"
+    gas = _solution(str(path), phase)
     names = tuple(gas.species_names)
     species = [gas.species(k) for k in range(gas.n_species)]
     extra: list[dict[str, Any]] = [dict(one.input_data) for one in species]
     count = range(gas.n_species)
     return GasPhase(
         name=mechanism,
+        phase=phase,
         path=str(path),
         sha256=hashlib.sha256(path.read_bytes()).hexdigest(),
         species=names,
@@ -92,6 +99,14 @@ def load_phase(mechanism: str) -> GasPhase:
     )
 
 
+def phase_for(mechanism: str, mixture: Mapping[str, float]) -> GasPhase:
+    """The smallest phase of a mechanism that holds a dry mixture (mole fractions by species)."""
+    noble = [name for name in NOBLE if mixture.get(name, 0.0) > 0.0]
+    if len(noble) > 1:
+        return load_phase(mechanism)
+    return load_phase(mechanism, noble[0] if noble else NOBLE[0])
+
+
 def mechanism_path(mechanism: str) -> Path:
     """Path of a mechanism shipped with the package."""
     path = Path(str(resources.files("sonoyield.mechanisms").joinpath(f"{mechanism}.yaml")))
@@ -101,10 +116,10 @@ def mechanism_path(mechanism: str) -> Path:
 
 
 @lru_cache(maxsize=8)
-def _solution(path: str) -> ct.Solution:
+def _solution(path: str, phase: str) -> ct.Solution:
     import cantera as ct
 
-    return ct.Solution(path)
+    return ct.Solution(path, phase)
 
 
 def _nasa9(species: list[Any]) -> Array:

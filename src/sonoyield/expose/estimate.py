@@ -10,7 +10,7 @@ from typing import Any
 
 from sonoyield._version import __version__
 from sonoyield.collapse.bubble import Bubble
-from sonoyield.collapse.follow import Accuracy, follow
+from sonoyield.collapse.follow import PATIENCE, Accuracy, follow
 from sonoyield.collapse.history import History
 from sonoyield.collapse.ledger import Balance, Energies, balance, energies
 from sonoyield.collapse.one_way import follow_one_way
@@ -25,7 +25,7 @@ from sonoyield.collapse.yields import (
     oxidant_per_collapse,
     windows_per_period,
 )
-from sonoyield.describe.gas import ABSORBED, load_phase
+from sonoyield.describe.gas import ABSORBED, phase_for
 from sonoyield.describe.liquid import LiquidState, liquid_state
 from sonoyield.describe.protocol import Protocol
 from sonoyield.expose.dose import Dose, dose
@@ -96,7 +96,7 @@ def bubble_of(protocol: Protocol, liquid: LiquidState) -> Bubble:
     shares = {"water": model.accommodation.of("H2O")}
     shares |= {name: model.accommodation.of(name) for name in ABSORBED}
     return Bubble(
-        phase=load_phase("h2o_o2"),
+        phase=phase_for("h2o_o2", protocol.gas.mixture),
         liquid=liquid,
         ambient_pressure=protocol.liquid.ambient_pressure,
         frequency=protocol.drive.frequency,
@@ -162,10 +162,11 @@ def _warnings(
     protocol: Protocol, liquid: LiquidState, history: History, collapse: Collapse, outcome: Outcome
 ) -> list[str]:
     found = []
-    if history.stopped and history.windows:
+    if history.stopped:
         found.append(
-            f"Only {len(history.windows)} of {protocol.model.collapses} windows completed: no "
-            "further main expansion came within 2.5 periods. Yields are means over those."
+            f"{len(history.windows)} of {protocol.model.collapses} windows completed: no further "
+            f"main expansion came within {PATIENCE} periods. Yields are means over complete "
+            "windows, or cover the whole run where there is none."
         )
     for one in beyond_thermo(history):
         found.append(

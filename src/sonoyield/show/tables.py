@@ -2,10 +2,14 @@
 
 from __future__ import annotations
 
+from dataclasses import asdict
 from typing import TYPE_CHECKING
 
+from rich import box
 from rich.console import Console
 from rich.table import Table
+
+from sonoyield.collapse.yields import OXIDANT_FORMULA
 
 if TYPE_CHECKING:
     from sonoyield.expose.estimate import Estimate
@@ -26,7 +30,9 @@ def print_estimate(result: Estimate, console: Console) -> None:
         console.print(_collapse(result))
         console.print(_counts(result))
         console.print(_exposure(result))
-    console.print(_closure(result))
+        console.print(_EXPOSURE_NOTE + "\n")
+        console.print(_energy(result))
+    console.print(_closure(result) + "\n")
     if result.coupling_difference is not None:
         console.print(_difference(result))
     for warning in result.warnings:
@@ -44,7 +50,9 @@ def number(value: float | None, digits: int = 3) -> str:
 
 
 def _table(title: str, *columns: str) -> Table:
-    table = Table(title=title, title_justify="left", title_style="bold", expand=False)
+    table = Table(
+        title=title, title_justify="left", title_style="bold", box=box.SIMPLE_HEAD, pad_edge=False
+    )
     for i, column in enumerate(columns):
         table.add_column(column, justify="left" if i == 0 else "right")
     return table
@@ -56,7 +64,8 @@ def _assumed(result: Estimate) -> Table:
     mixture = ", ".join(f"{100 * share:.4g} % {name}" for name, share in bubble.mixture.items())
     pulse = protocol.schedule.pulse
     shares = ", ".join(f"{name} {value:g}" for name, value in bubble.accommodation.items())
-    table = _table("Assumed", "what", "value")
+    table = _table("Assumed", "what")
+    table.add_column("value", justify="left")
     for what, value in (
         ("sound", f"{bubble.frequency / 1e3:.5g} kHz, {bubble.pressure_amplitude / 1e5:.4g} bar "
                   "amplitude, sine, rarefaction first"),
@@ -130,28 +139,30 @@ def _exposure(result: Estimate) -> Table:
             number(60e6 * dose.mol_per_L_per_s_on),
             number(dose.mol_per_J),
         )
-    from sonoyield.collapse.yields import OXIDANT_FORMULA
-
-    table.caption = (
-        f"oxidant = {OXIDANT_FORMULA}; NOx not counted. Delivered is not what a dosimeter reads: "
-        "most radicals meet each other first. Bubble numbers are yours and scale every line."
-    )
     return table
 
 
-def _closure(result: Estimate) -> Table:
-    balance, energy = result.balance, result.energy
+_EXPOSURE_NOTE = (
+    f"oxidant = {OXIDANT_FORMULA}; NOx not counted. Delivered is not what a dosimeter reads: most "
+    "radicals meet each other first. The number of bubbles is yours and scales every line."
+)
+
+
+def _energy(result: Estimate) -> Table:
+    assert result.energy is not None
     table = _table("Energy of one window", "term", "J")
-    if energy is not None:
-        for term in ("work", "viscous", "radiation", "radiation_far_field", "heat", "carried",
-                     "stored", "residual"):  # fmt: skip
-            table.add_row(term.replace("_", " "), number(getattr(energy, term)))
-    table.caption = (
-        f"closed to {balance.energy_error:.1e} of the work, elements to "
-        f"{balance.element_error:.1e}; zero of enthalpy: liquid water, O2 and noble gases at the "
-        "liquid's temperature"
-    )
+    for term, value in asdict(result.energy).items():
+        table.add_row(term.replace("_", " "), number(value))
     return table
+
+
+def _closure(result: Estimate) -> str:
+    balance = result.balance
+    return (
+        f"Energy closed to {balance.energy_error:.1e} of the work, elements to "
+        f"{balance.element_error:.1e}. Zero of enthalpy: liquid water, O2 and noble gases at the "
+        "liquid's temperature."
+    )
 
 
 def _difference(result: Estimate) -> Table:
