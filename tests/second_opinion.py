@@ -26,7 +26,8 @@ AVOGADRO = ct.avogadro / 1e3
 RADICALS = ("OH", "H", "O", "HO2", "H2O2", "O3")
 ENERGIES = ("work", "viscous", "radiation", "heat", "carried")
 STEAM = (2.443221e-3, 1.323095e-2, 6.770357e-3, -3.454586e-3, 4.096266e-4)
-COLDEST = 200.0  # K, below it c_p is held and rates are taken here
+COLDEST = 200.0  # K, below it c_p is held
+COLDEST_TRANSPORT = 100.0  # K, the transport polynomials are held below
 FLOOR = 20.0  # K, trial temperatures below it are trials only
 
 
@@ -46,6 +47,7 @@ class Case:
     saturation_pressure: float
     mixture: dict[str, float]
     mechanism_path: str
+    phase: str = "gas"  # of the mechanism file
     accommodation_water: float = 0.4
     accommodation_radicals: float = 0.4
     rtol: float = 1e-6
@@ -146,7 +148,9 @@ class _Bubble:
 
     def __init__(self, case: Case) -> None:
         self.case = case
-        self.gas = ct.Solution(case.mechanism_path, transport_model="mixture-averaged")
+        self.gas = ct.Solution(
+            case.mechanism_path, case.phase, transport_model="mixture-averaged"
+        )
         self.names: list[str] = list(self.gas.species_names)
         self.count = len(self.names)
         self.water = self.names.index("H2O")
@@ -246,7 +250,7 @@ class _Bubble:
 
         The polynomials in ln T are held at the ends of their range, beyond which they run away.
         """
-        log = math.log(min(max(temperature, COLDEST), self.hottest))
+        log = math.log(min(max(temperature, COLDEST_TRANSPORT), self.hottest))
         square = log * log
         values = self.polynomials @ np.array([1.0, log, square, square * log, square * square])
         root = math.sqrt(temperature)
@@ -274,8 +278,10 @@ class _Bubble:
 
         warm = max(temperature, COLDEST)
         gas.set_unnormalized_mole_fractions(x)
-        gas.TD = warm, mass / volume
+        gas.TD = temperature, mass / volume
         gained = gas.net_production_rates * (1e3 * volume)
+        if temperature < warm:  # rates go on below 200 K, the thermo polynomials do not
+            gas.TD = warm, mass / volume
         enthalpy, cp = self._thermo(temperature, warm)
         inner = enthalpy - thermal
         capacity = float(n @ cp)

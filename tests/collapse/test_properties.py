@@ -9,6 +9,7 @@ from iapws._iapws import _ThCond
 
 from sonoyield.collapse.properties import (
     COLDEST,
+    COLDEST_TRANSPORT,
     heat_capacity_and_enthalpy,
     mixture_conductivity,
     mixture_diffusivity,
@@ -115,7 +116,7 @@ def test_diffusivity_of_a_pure_gas(phase: GasPhase, gas: ct.Solution) -> None:
 
 def test_transport_is_held_at_the_ends_of_its_range(phase: GasPhase) -> None:
     top = phase.transport_top
-    assert transport_logarithm(50.0, top) == pytest.approx(np.log(COLDEST))
+    assert transport_logarithm(50.0, top) == pytest.approx(np.log(COLDEST_TRANSPORT))
     assert transport_logarithm(2.0 * top, top) == pytest.approx(np.log(top))
     assert transport_logarithm(1000.0, top) == pytest.approx(np.log(1000.0))
 

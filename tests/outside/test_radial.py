@@ -12,7 +12,34 @@ import pytest
 from polytropic import driven, first_extreme
 from rows import ROWS
 
+from sonoyield.collapse.radial import keller_miksis
+
 HARD = 8.86  # R0 / a of argon, as the rows state it
+
+
+@pytest.mark.parametrize("seed", range(12))
+def test_acceleration_satisfies_the_published_equation(seed: int) -> None:
+    """Keller and Miksis 1980, as the rows state it, term by term on random states.
+
+    Also the terms that the integrations below hardly feel: the rate of the far pressure, and the
+    acceleration inside the rate of the viscous wall pressure.
+    """
+    rng = np.random.default_rng(seed)
+    r, pg, far = (float(10.0**e) for e in rng.uniform([-7.0, 3.0, 4.0], [-4.0, 9.0, 6.0]))
+    v = float(rng.uniform(-900.0, 900.0))
+    pg_rate, far_rate = float(rng.normal(0.0, 1e7 * pg)), float(rng.normal(0.0, 1e7 * far))
+    rho, c, mu, sigma = 998.2071505, 1482.34617, 0.05, 0.0727361404
+    a = keller_miksis(r, v, pg, pg_rate, far, far_rate, rho, c, mu, sigma)
+    wall = pg - 2.0 * sigma / r - 4.0 * mu * v / r
+    drag_rate = 4.0 * mu * (a / r - v * v / r**2)
+    wall_rate = pg_rate + 2.0 * sigma * v / r**2 - drag_rate
+    terms = [
+        (1.0 - v / c) * r * a,
+        1.5 * v * v * (1.0 - v / (3.0 * c)),
+        -(1.0 + v / c) * (wall - far) / rho,
+        -r / (rho * c) * (wall_rate - far_rate),
+    ]
+    assert abs(sum(terms)) <= 1e-9 * max(map(abs, terms))
 
 
 def test_dyn_05_isothermal_hard_core() -> None:

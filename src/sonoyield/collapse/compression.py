@@ -23,8 +23,8 @@ from sonoyield.collapse.reactor import KILO, OWN
 from sonoyield.describe.gas import GAS_CONSTANT, Array
 
 # Columns of the nodes: radius and its first two derivatives; what the wall conducts of heat (W for
-# each K of difference) and of vapour (mol/s for each mol/m3), each with its derivative; how fast the volume
-# relaxes to the history's (1/s).
+# each K of difference) and of vapour (mol/s for each mol/m3), each with its derivative; how fast
+# the volume relaxes to the history's (1/s).
 #
 # The conductances are handed over, not the flows themselves: the reactor is cooler than the frozen
 # gas and holds less steam, and the frozen gas's flows take more than it has (tried: below 4 K in
@@ -72,7 +72,8 @@ class Compression:
 
     def wall(self, times: Array) -> tuple[Array, Array]:
         """Radius (m) and wall speed (m/s) at each time (s)."""
-        found = np.array([wall_at(self.nodes, segment(self.nodes, t), t) for t in times]).reshape(-1, 2)
+        rows = [wall_at(self.nodes, segment(self.nodes, time), time) for time in times]
+        found = np.array(rows).reshape(-1, 2)
         return found[:, 0], found[:, 1]
 
     def volume(self, time: float) -> float:
@@ -82,7 +83,9 @@ class Compression:
 
     def longest_step(self, time: float) -> float:
         """Longest step that an integrator may take from a time (s) on, s."""
-        return float(self.limits[segment(self.nodes, time)])
+        row = segment(self.nodes, time)
+        left = float(self.nodes[row + 1, TIME]) - time
+        return min(float(self.limits[row]), left + float(self.limits[row + 1]))
 
 
 @njit(cache=True, error_model="numpy")
@@ -129,8 +132,7 @@ def conductance_at(nodes: Array, row: int, time: float, column: int) -> float:
 @njit(cache=True, error_model="numpy")
 def reactor_rates(
     crossing: Any, scale: float, nodes: Array, scratch: Array, constants: Array, species: Array,
-    nasa: Array, conductivity: Array, diffusivity: Array, time: float, y: Array, left: Array,
-    right: Array,
+    nasa: Array, diffusivity: Array, time: float, y: Array, left: Array, right: Array,
 ) -> None:  # fmt: skip
     """Turn Cantera's production (kmol/s, in ``right``) into the whole right-hand side.
 
@@ -218,7 +220,7 @@ def _fill(
 
 
 def _slopes(times: Array, values: Array) -> Array:
-    """Derivatives that keep the cubic between neighbours: harmonic means (Fritsch, Butland 1984)."""
+    """Harmonic means of the secants: the cubic stays between neighbours (Fritsch, Butland 1984)."""
     secants = np.diff(values) / np.diff(times)
     product, total = secants[:-1] * secants[1:], secants[:-1] + secants[1:]
     inner = np.divide(2.0 * product, total, out=np.zeros_like(total), where=product > 0.0)

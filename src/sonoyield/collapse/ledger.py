@@ -55,6 +55,7 @@ class Balance:
 
 def energies(history: History, span: tuple[int, int]) -> Energies:
     """Energy ledger between two rows of a history."""
+    history = history.bubble_stage
     begin, end = span
     bubble = history.bubble
     change = history.ledger[end] - history.ledger[begin]

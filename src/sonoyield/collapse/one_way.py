@@ -15,17 +15,21 @@ import cantera as ct
 import numpy as np
 
 from sonoyield.collapse import equations as eq
-from sonoyield.collapse.bubble import Bubble
+from sonoyield.collapse.bubble import CONTENTS_FLOOR, Bubble
 from sonoyield.collapse.compression import ROOM, Compression, reactor_rates
+from sonoyield.collapse.exchange import COVOLUME
 from sonoyield.collapse.follow import FAILED, STEP_LIMIT, Accuracy, _Run
 from sonoyield.collapse.history import History, Recorder
 from sonoyield.collapse.ledger import balance
-from sonoyield.collapse.reactor import CONTENTS_FLOOR, KILO, OWN, IntegrationError
+from sonoyield.collapse.reactor import KILO, OWN, IntegrationError
 from sonoyield.describe.gas import Array
 
 WARM = 600.0  # K; the reactor begins where the gas is first warmer, fresh contents are inert below
 VOLUME_LIMIT = 1e-6  # relative difference between the reactor's volume and the history's
 STOPS = (FAILED, STEP_LIMIT)
+# Share of the volume that the molecules' covolumes may fill. Steam that splits makes more of them,
+# and in the strongest collapses they would not fit where the frozen contents went.
+FULL = 0.99
 SHARE = 0.01  # of the tolerance asked for: the volume is a state of the reactor and holds to it
 
 
@@ -57,7 +61,7 @@ def follow_one_way(
     """Integrate from rest until ``collapses`` windows of the frozen bubble are complete.
 
     Ends earlier, and says so in ``History.stopped``, as ``follow`` does, and fails where the
-    reactor's volume leaves the history's by more than 1e-6.
+    reactor's volume leaves the history's by more than 1e-6 or is too small for what is in it.
     """
     accuracy = accuracy or Accuracy()
     history = _once(bubble, collapses, accuracy)
@@ -100,8 +104,8 @@ class _FrozenRun(_Run):
 def _react(frozen: History, begin: int, accuracy: Accuracy) -> OneWayHistory:
     """Let the contents react along a frozen history from row ``begin`` on."""
     compression = Compression.of(frozen)
-    record = Recorder(np.append(frozen.states[0], [0.0, 0.0]))
-    spare = np.zeros((begin, 2))
+    record = Recorder(np.append(frozen.states[0], 0.0))
+    spare = np.zeros((begin, 1))
     record.extend(frozen.times[1 : begin + 1], np.hstack([frozen.states[1 : begin + 1], spare]))
     stage = _ReactorStage(frozen, compression, begin, SHARE * accuracy.relative)
     marks = [row for row in frozen.marks if row <= begin]
@@ -127,33 +131,32 @@ def _gather(
 ) -> OneWayHistory:
     """Join the reactor's steps with the bubble stage at the same times."""
     times, rows = record.arrays()
-    beside = np.column_stack(
-        [np.interp(times, frozen.times, column) for column in frozen.states.T]
-    )
+    beside = np.column_stack([np.interp(times, frozen.times, one) for one in frozen.states.T])
     after = times > stage.began
     beside[after, eq.RADIUS], beside[after, eq.SPEED] = compression.wall(times[after])
     ledger = slice(eq.MOLES + 2 * len(frozen.bubble.phase.species), beside.shape[1])
-    states = rows[:, :-2].copy()
+    states = rows[:, :-1].copy()
     states[:, eq.RADIUS], states[:, eq.SPEED] = beside[:, eq.RADIUS], beside[:, eq.SPEED]
     states[:, ledger] = beside[:, ledger]
     return OneWayHistory(
         frozen.bubble, times, states, marks, stopped,
         frozen.counters | {"hot_steps": stage.steps, "evaluations": stage.evaluations,
                            "stages": stage.starts},
-        beside, rows[:, -2], float(rows[:, -1].max()),
+        beside, rows[:, -1], stage.volume_error,
     )  # fmt: skip
 
 
 class _ReactorStage:
-    """Steps the reactor along the compression; ``state`` ends with energy and volume error."""
+    """Steps the reactor along the compression; ``state`` ends with the energy received."""
 
     def __init__(
         self, frozen: History, compression: Compression, begin: int, relative: float
     ) -> None:
         self.compression = compression
+        self.covolume = frozen.bubble.species[:, COVOLUME]
         self.time = self.began = float(frozen.times[begin])
-        self.state = np.append(frozen.states[begin], [0.0, 0.0])
-        self.steps, self.starts, self.last = 0, 1, 0.0
+        self.state = np.append(frozen.states[begin], 0.0)
+        self.steps, self.starts, self.last, self.volume_error = 0, 1, 0.0, 0.0
         self.reactor = _reactor(frozen.bubble, frozen.states[begin], compression)
         self.network = ct.ReactorNet([self.reactor])
         self.network.initial_time = self.time
@@ -169,7 +172,9 @@ class _ReactorStage:
     def step(self, most: int) -> str:
         """Advance by one step no longer than the compression allows; why to stop, or nothing."""
         limit = self.compression.longest_step(self.time)
-        self.network.max_time_step = limit
+        # The integrator chooses its next step before it learns the next limit, which falls by at
+        # most the step taken: half of this limit is never more than the next.
+        self.network.max_time_step = 0.5 * limit
         try:
             if self.last > limit:
                 self._restart()
@@ -179,8 +184,9 @@ class _ReactorStage:
         self.last, self.time = now - self.time, now
         self.steps += 1
         self.reactor.unpack(self.reactor.trial, self.state)
-        self.state[-1] = self._volume_error(now, self.reactor.trial[1])
-        if self.state[-1] > VOLUME_LIMIT:
+        error = self._volume_error(now, self.reactor.trial[1])
+        self.volume_error = max(self.volume_error, error)
+        if error > VOLUME_LIMIT or self._filled() > FULL:
             return FAILED
         return STEP_LIMIT if self.steps >= most else ""
 
@@ -200,12 +206,16 @@ class _ReactorStage:
         self.network.reinitialize()
         self.starts += 1
 
+    def _filled(self) -> float:
+        moles = self.state[eq.MOLES : eq.MOLES + self.reactor.count]
+        return float(moles @ self.covolume / self.reactor.trial[1])
+
     def _volume_error(self, time: float, volume: float) -> float:
         there = float(self.compression.volume(time))
         return abs(volume - there) / there
 
 
-class _CompressedReactor(ct.ExtensibleIdealGasMoleReactor):  # type: ignore[misc]
+class _CompressedReactor(ct.ExtensibleIdealGasMoleReactor):
     """Cantera's reactor in a given volume; what crossed and the energy received are added."""
 
     def prepare(self, bubble: Bubble, state: Array, compression: Compression) -> None:
@@ -219,7 +229,7 @@ class _CompressedReactor(ct.ExtensibleIdealGasMoleReactor):  # type: ignore[misc
         self.energy_enabled = False  # the energy balance is ours
         self.rates = partial(
             reactor_rates, bubble.crossing, self.scale, compression.nodes,
-            np.empty((ROOM, count)), *bubble.tables,
+            np.empty((ROOM, count)), *bubble.tables[:3], bubble.phase.diffusivity,
         )  # fmt: skip
         self.start = np.zeros(self.base + len(self.crossing) + 1)
         self.start[0] = state[eq.TEMPERATURE]
@@ -249,7 +259,7 @@ class _CompressedReactor(ct.ExtensibleIdealGasMoleReactor):  # type: ignore[misc
         state[eq.TEMPERATURE] = y[0]
         state[eq.MOLES : eq.MOLES + count] = y[OWN : self.base] * KILO
         state[eq.MOLES + count + self.crossing] = y[self.base : -1] * KILO
-        state[-2] = y[-1] / self.scale
+        state[-1] = y[-1] / self.scale
 
 
 def _reactor(bubble: Bubble, state: Array, compression: Compression) -> _CompressedReactor:

@@ -63,7 +63,8 @@ def outcome_of(history: History, collapse: Collapse, balance: Balance) -> Outcom
         return Outcome(
             Code.INTEGRATION_FAILED,
             f"The integration failed at {history.times[-1]:.4g} s; no number is given. The "
-            "collapse is likely beyond this model: try a lower pressure.",
+            "collapse is likely beyond this model: try a lower pressure or, with one-way coupling, "
+            "the two-way one (split steam may not fit into the volume of the frozen gas).",
         )
     if not balance.closed:
         return Outcome(

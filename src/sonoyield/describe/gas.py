@@ -7,6 +7,7 @@ enthalpies, transport, covolumes) is read out of the loaded phase and compared w
 from __future__ import annotations
 
 import hashlib
+import warnings
 from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import lru_cache
@@ -119,7 +120,10 @@ def mechanism_path(mechanism: str) -> Path:
 def _solution(path: str, phase: str) -> ct.Solution:
     import cantera as ct
 
-    return ct.Solution(path, phase)
+    with warnings.catch_warnings():
+        # Cantera 3.2 itself asks in an outdated way for the colliders that a lean phase leaves out.
+        warnings.filterwarnings("ignore", "Kinetics::kineticsSpeciesIndex", DeprecationWarning)
+        return ct.Solution(path, phase)
 
 
 def _nasa9(species: list[Any]) -> Array:
