@@ -148,9 +148,7 @@ class _Bubble:
 
     def __init__(self, case: Case) -> None:
         self.case = case
-        self.gas = ct.Solution(
-            case.mechanism_path, case.phase, transport_model="mixture-averaged"
-        )
+        self.gas = ct.Solution(case.mechanism_path, case.phase, transport_model="mixture-averaged")
         self.names: list[str] = list(self.gas.species_names)
         self.count = len(self.names)
         self.water = self.names.index("H2O")

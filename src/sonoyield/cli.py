@@ -2,7 +2,12 @@
 
 from __future__ import annotations
 
+import os
+import signal
 import sys
+from collections.abc import Iterator
+from contextlib import contextmanager
+from io import TextIOWrapper
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
@@ -23,26 +28,31 @@ app = typer.Typer(
     help="Predict how much radical chemistry an ultrasound exposure makes.",
 )
 
-ProtocolFile = Annotated[Path, typer.Argument(metavar="FILE", help="Protocol file (TOML).")]
+# readable=False: the loader says in one line why a file cannot be read.
+ProtocolFile = Annotated[
+    Path, typer.Argument(metavar="FILE", readable=False, help="Protocol file (TOML).")
+]
 AsJson = Annotated[bool, typer.Option("--json", help="Print the result as JSON.")]
 Out = Annotated[
-    Path | None, typer.Option(metavar="PATH", help="Write the result: .json, .csv or .parquet.")
+    Path | None,
+    typer.Option(metavar="PATH", readable=False, help="Write the result: .json, .csv or .parquet."),
 ]
 HistoryPath = Annotated[
     Path | None,
-    typer.Option(metavar="PATH", help="Write R, U, T, p, composition: .csv or .parquet."),
+    typer.Option(
+        metavar="PATH", readable=False, help="Write R, U, T, p, composition: .csv or .parquet."
+    ),
 ]
 Both = Annotated[bool, typer.Option("--both", help="Run both couplings; report the difference.")]
 Quiet = Annotated[bool, typer.Option("--quiet", help="No progress and no warnings on stderr.")]
 
 
 def main() -> None:
-    """Entry point: run a command, and turn what goes wrong into an exit code."""
-    try:
-        app()
-    except KeyboardInterrupt:
-        _say("interrupted")
-        sys.exit(INTERRUPTED)
+    """Entry point: run a command; what goes wrong becomes an exit code."""
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, TextIOWrapper):  # a terminal that lacks a letter of the title
+            stream.reconfigure(errors="backslashreplace")
+    app()
 
 
 def _version(wanted: bool) -> None:
@@ -73,25 +83,13 @@ def estimate(
     quiet: Quiet = False,
 ) -> None:
     """Radicals per collapse and per exposure of one protocol."""
-    from sonoyield.describe.errors import ProtocolError
-    from sonoyield.describe.protocol import Protocol
-    from sonoyield.show.files import HISTORY_SUFFIXES, RESULT_SUFFIXES
-
-    _check_target(out, "--out", RESULT_SUFFIXES)
-    _check_target(history, "--history", HISTORY_SUFFIXES)
+    _check_targets(out, history)
     try:
-        protocol = Protocol.load(file)
-    except ProtocolError as error:
-        _refuse(str(error))
-    if not quiet:
-        _tell_first_compilation()
-    from sonoyield.expose.estimate import estimate as run
-
-    result = run(protocol, both=both)
-    try:
+        result = _run(file, both, quiet)
         _show(result, json, out, history)
-    except OSError as error:
-        _refuse(f"{error.filename or out or history}: cannot be written: {error.strerror}")
+    except KeyboardInterrupt:
+        _say("interrupted")
+        raise typer.Exit(INTERRUPTED) from None
     if not quiet:
         for warning in result.warnings if json else ():
             _say(f"warning: {warning}")
@@ -100,13 +98,57 @@ def estimate(
         raise typer.Exit(NUMERICS)
 
 
+def _run(file: Path, both: bool, quiet: bool) -> Estimate:
+    from sonoyield.describe.errors import ProtocolError
+    from sonoyield.describe.protocol import Protocol
+
+    try:
+        protocol = Protocol.load(file)
+    except ProtocolError as error:
+        _refuse(str(error))
+    if not quiet:
+        _tell_first_compilation()
+    # SUNDIALS, below Cantera, prints its warnings on stdout unless told where.
+    os.environ.setdefault("SUNLOGGER_WARNING_FILENAME", os.devnull)
+    from sonoyield.expose.estimate import estimate as run
+
+    with _left_at_once():
+        return run(protocol, both=both)
+
+
+@contextmanager
+def _left_at_once() -> Iterator[None]:
+    """End the process on an interrupt while the integrators run, when nothing is half written.
+
+    An exception raised inside a rate would be taken for a failed step and swallowed there.
+    """
+
+    def leave(*_: object) -> None:
+        _say("interrupted")
+        sys.stderr.flush()
+        os._exit(INTERRUPTED)
+
+    try:
+        before = signal.signal(signal.SIGINT, leave)
+    except ValueError:  # not in the main thread, where no signal arrives
+        yield
+        return
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGINT, before)
+
+
 def _show(result: Estimate, json: bool, out: Path | None, history: Path | None) -> None:
     from sonoyield.show.files import to_json, write_history, write_result
 
-    if out is not None:
-        write_result(result.as_dict(), out)
-    if history is not None:
-        write_history(result.history, history)
+    try:
+        if out is not None:
+            write_result(result.as_dict(), out)
+        if history is not None:
+            write_history(result.history, history)
+    except OSError as error:
+        _refuse(f"{error.filename}: cannot be written: {error.strerror}")
     if json:
         typer.echo(to_json(result.as_dict()))
     elif out is None:
@@ -115,6 +157,15 @@ def _show(result: Estimate, json: bool, out: Path | None, history: Path | None) 
         from sonoyield.show.tables import print_estimate
 
         print_estimate(result, Console(highlight=False))
+
+
+def _check_targets(out: Path | None, history: Path | None) -> None:
+    from sonoyield.show.files import HISTORY_SUFFIXES, RESULT_SUFFIXES
+
+    _check_target(out, "--out", RESULT_SUFFIXES)
+    _check_target(history, "--history", HISTORY_SUFFIXES)
+    if out is not None and history is not None and out.absolute() == history.absolute():
+        _refuse(f"--history {history}: is the path of --out too; allowed another path")
 
 
 def _check_target(path: Path | None, option: str, suffixes: tuple[str, ...]) -> None:
@@ -126,6 +177,8 @@ def _check_target(path: Path | None, option: str, suffixes: tuple[str, ...]) -> 
         _refuse(f"{option} {path}: there is no folder {path.parent}")
     if path.is_dir():
         _refuse(f"{option} {path}: is a folder")
+    if not os.access(path.parent, os.W_OK):
+        _refuse(f"{option} {path}: the folder {path.parent} may not be written to")
 
 
 def _tell_first_compilation() -> None:

@@ -6,6 +6,7 @@ import hashlib
 import json
 from dataclasses import asdict, dataclass, replace
 from importlib.metadata import version
+from math import isfinite
 from typing import Any
 
 from sonoyield._version import __version__
@@ -44,7 +45,7 @@ class Estimate:
 
     ``collapse``, ``counts``, ``energy``, ``doses`` and ``oxidant`` are ``None`` when the numerics
     failed (``outcome.code.has_numbers`` is false). ``counts`` in molecules per collapse, by
-    species. ``history`` holds the run itself.
+    species. ``history`` holds the run itself, ``accuracy`` what was asked of it.
     """
 
     protocol: Protocol
@@ -60,6 +61,7 @@ class Estimate:
     doses: dict[str, Dose] | None
     oxidant: Dose | None
     mechanical_index: float | None
+    accuracy: Accuracy
     coupling_difference: dict[str, Any] | None = None
 
     def as_dict(self) -> dict[str, Any]:
@@ -73,14 +75,15 @@ def estimate(protocol: Protocol, both: bool = False, accuracy: Accuracy | None =
     With ``both`` the other coupling is run too and its difference reported. Raises
     ``FileNotFoundError`` when the mechanism is not installed.
     """
+    accuracy = accuracy or Accuracy()
     liquid = liquid_of(protocol)
     bubble = bubble_of(protocol, liquid)
     history = _run(bubble, protocol, protocol.model.coupling, accuracy)
-    result = _estimate(protocol, liquid, history)
+    result = _estimate(protocol, liquid, history, accuracy)
     if not both:
         return result
     other = "one_way" if protocol.model.coupling == "two_way" else "two_way"
-    second = _estimate(protocol, liquid, _run(bubble, protocol, other, accuracy))
+    second = _estimate(protocol, liquid, _run(bubble, protocol, other, accuracy), accuracy)
     return _with_difference(result, second, other)
 
 
@@ -110,12 +113,14 @@ def bubble_of(protocol: Protocol, liquid: LiquidState) -> Bubble:
     )
 
 
-def _run(bubble: Bubble, protocol: Protocol, coupling: str, accuracy: Accuracy | None) -> History:
+def _run(bubble: Bubble, protocol: Protocol, coupling: str, accuracy: Accuracy) -> History:
     run = follow if coupling == "two_way" else follow_one_way
     return run(bubble, protocol.model.collapses, accuracy)
 
 
-def _estimate(protocol: Protocol, liquid: LiquidState, history: History) -> Estimate:
+def _estimate(
+    protocol: Protocol, liquid: LiquidState, history: History, accuracy: Accuracy
+) -> Estimate:
     closure = balance(history)
     collapse = collapse_of(history)
     outcome = outcome_of(history, collapse, closure)
@@ -126,6 +131,7 @@ def _estimate(protocol: Protocol, liquid: LiquidState, history: History) -> Esti
         "history": history,
         "outcome": outcome,
         "balance": closure,
+        "accuracy": accuracy,
         "mechanical_index": mechanical_index(drive.frequency, drive.pressure),
     }
     if not outcome.code.has_numbers:
@@ -222,7 +228,7 @@ def _as_dict(result: Estimate) -> dict[str, Any]:
         "collapse": plain(result.collapse),
         "per_collapse": each(result.counts),
         "energy_per_window_J": plain(result.energy),
-        "balance": asdict(result.balance),
+        "balance": {key: _finite(value) for key, value in asdict(result.balance).items()},
         "driving": plain(result.driven),
         "per_exposure": each(result.doses),
         "oxidant": {
@@ -239,6 +245,11 @@ def _as_dict(result: Estimate) -> dict[str, Any]:
     return table
 
 
+def _finite(value: float) -> float | None:
+    """A number for JSON, which knows no infinity: that of a ledger that cannot be added up."""
+    return value if isfinite(value) else None
+
+
 def _inputs(result: Estimate) -> dict[str, Any]:
     phase = result.history.bubble.phase
     return result.protocol.dump() | {
@@ -253,7 +264,7 @@ def _provenance(result: Estimate) -> dict[str, Any]:
     return {
         "input_sha256": hashlib.sha256(described.encode()).hexdigest(),
         "libraries": {name: version(name) for name in LIBRARIES},
-        "tolerance": Accuracy().relative,
+        "tolerance": result.accuracy.relative,
         "windows": len(result.history.windows),
         "counters": result.history.counters,
     }

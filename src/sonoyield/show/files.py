@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import errno
 import json
 import os
 import tempfile
@@ -25,7 +26,10 @@ def to_json(table: dict[str, Any]) -> str:
 
 
 def write_result(table: dict[str, Any], path: Path) -> None:
-    """Write a result as JSON, or flat as one row of CSV or Parquet, by the path's suffix."""
+    """Write a result as JSON, or flat as one row of CSV or Parquet, by the path's suffix.
+
+    Raises ``OSError`` with the path as its ``filename``; what stood there is kept then.
+    """
     if path.suffix == ".json":
         _write(path, lambda target: target.write_text(to_json(table) + "\n"))
     elif path.suffix == ".csv":
@@ -37,7 +41,10 @@ def write_result(table: dict[str, Any], path: Path) -> None:
 
 
 def write_history(history: History, path: Path) -> None:
-    """Write R, U, T, p and composition against time as CSV or Parquet, by the path's suffix."""
+    """Write R, U, T, p and composition against time as CSV or Parquet, by the path's suffix.
+
+    Raises ``OSError`` with the path as its ``filename``; what stood there is kept then.
+    """
     frame = history_frame(history)
     if path.suffix == ".csv":
         _write(path, lambda target: frame.to_csv(target, index=False))
@@ -83,8 +90,16 @@ def _write_row(row: dict[str, Any], target: Path) -> None:
 
 
 def _write(path: Path, fill: Callable[[Path], object]) -> None:
+    try:
+        _fill_and_place(path, fill)
+    except OSError as error:  # name the user's file, not the temporary one
+        reason = error.strerror or str(error)
+        raise OSError(error.errno or errno.EIO, reason, str(path)) from error
+
+
+def _fill_and_place(path: Path, fill: Callable[[Path], object]) -> None:
     """Fill a temporary file beside ``path``, flush it to disk and put it in place."""
-    handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.", suffix=path.suffix)
+    handle, name = tempfile.mkstemp(dir=path.parent, prefix=".sonoyield-", suffix=path.suffix)
     os.close(handle)
     temporary = Path(name)
     try:

@@ -10,8 +10,10 @@ from rich.console import Console
 from rich.table import Table
 
 from sonoyield.collapse.yields import OXIDANT_FORMULA
+from sonoyield.describe.errors import one_line
 
 if TYPE_CHECKING:
+    from sonoyield.describe.protocol import Liquid
     from sonoyield.expose.estimate import Estimate
 
 CAUTIONS = (
@@ -23,7 +25,8 @@ MECHANICAL_INDEX_LIMIT = 1.9  # FDA 510(k) guidance, Track 3, general diagnostic
 
 def print_estimate(result: Estimate, console: Console) -> None:
     """Print what was assumed, the collapse, the counts and the exposure."""
-    console.print(f"[bold]{result.protocol.title or 'Untitled exposure'}[/bold]")
+    title = one_line(result.protocol.title) or "Untitled exposure"
+    console.print(title, style="bold", markup=False, emoji=False)
     console.print(f"Outcome: {result.outcome.code} - {result.outcome.sentence}\n")
     console.print(_assumed(result))
     if result.counts is not None:
@@ -35,6 +38,7 @@ def print_estimate(result: Estimate, console: Console) -> None:
     console.print(_closure(result) + "\n")
     if result.coupling_difference is not None:
         console.print(_difference(result))
+        console.print(_other_outcome(result) + "\n")
     for warning in result.warnings:
         console.print(f"Warning: {warning}")
     console.print(f"\n{_mechanical_index(result)}")
@@ -72,7 +76,7 @@ def _assumed(result: Estimate) -> Table:
         ("schedule", f"{protocol.schedule.duration:.4g} s, " + (
             "continuous" if pulse is None
             else f"{pulse.length:.4g} s pulses every {pulse.every:.4g} s")),
-        ("liquid", f"{protocol.liquid.kind}, {liquid.temperature - 273.15:.4g} degC, "
+        ("liquid", f"{_liquid(protocol.liquid)}, {liquid.temperature - 273.15:.4g} degC, "
                    f"{protocol.liquid.ambient_pressure / 1e5:.5g} bar ambient, "
                    f"{protocol.liquid.volume * 1e3:.4g} L insonated"),
         ("bubble at rest", f"{bubble.radius * 1e6:.4g} um, {mixture} (dry), saturated vapour"
@@ -89,6 +93,12 @@ def _assumed(result: Estimate) -> Table:
     ):  # fmt: skip
         table.add_row(what, value)
     return table
+
+
+def _liquid(liquid: Liquid) -> str:
+    if liquid.kind == "saline":
+        return f"saline of {liquid.salinity:.4g} g/L"
+    return liquid.kind
 
 
 def _collapse(result: Estimate) -> Table:
@@ -176,6 +186,13 @@ def _difference(result: Estimate) -> Table:
         if isinstance(pair, dict):
             table.add_row(key, *(number(pair[k], 4) for k in ("this", "other", "ratio")))
     return table
+
+
+def _other_outcome(result: Estimate) -> str:
+    difference = result.coupling_difference
+    assert difference is not None
+    numbers = "" if "OH_delivered" in difference else "; there are no numbers to compare"
+    return f"Outcome of {difference['other']}: {difference['other_outcome']}{numbers}."
 
 
 def _mechanical_index(result: Estimate) -> str:
