@@ -11,6 +11,7 @@ import typer
 from sonoyield._version import __version__
 
 if TYPE_CHECKING:
+    from sonoyield.decide.explain import Explanation
     from sonoyield.expose.estimate import Estimate
 
 BAD_INPUT, NUMERICS, INTERRUPTED = 2, 3, 130
@@ -34,6 +35,12 @@ HistoryPath = Annotated[
 ]
 Both = Annotated[bool, typer.Option("--both", help="Run both couplings; report the difference.")]
 Quiet = Annotated[bool, typer.Option("--quiet", help="No progress and no warnings on stderr.")]
+
+
+SpeciesNames = Annotated[
+    list[str] | None,
+    typer.Option("--species", metavar="NAME", help="Species to explain; may be repeated."),
+]
 
 
 def main() -> None:
@@ -98,6 +105,62 @@ def estimate(
     if not result.outcome.code.has_numbers:
         _say(result.outcome.sentence)
         raise typer.Exit(NUMERICS)
+
+
+@app.command()
+def explain(
+    file: ProtocolFile,
+    species: SpeciesNames = None,
+    json: AsJson = False,
+    out: Out = None,
+    quiet: Quiet = False,
+) -> None:
+    """Reactions that make and destroy what is delivered, and the rates that matter."""
+    from sonoyield.describe.errors import ProtocolError
+    from sonoyield.describe.protocol import Protocol
+    from sonoyield.show.files import RESULT_SUFFIXES
+
+    _check_target(out, "--out", RESULT_SUFFIXES)
+    try:
+        protocol = Protocol.load(file)
+    except ProtocolError as error:
+        _refuse(str(error))
+    if not quiet:
+        _tell_first_compilation()
+    from sonoyield.decide.explain import SpeciesError
+    from sonoyield.decide.explain import explain as run
+
+    try:
+        result = run(protocol, tuple(dict.fromkeys(species or ("OH", "H2O2"))))
+    except SpeciesError as error:
+        _refuse(f"--species {error}")
+    try:
+        _show_explanation(result, json, out)
+    except OSError as error:
+        _refuse(f"{error.filename or out}: cannot be written: {error.strerror}")
+    if not quiet:
+        for warning in result.warnings if json else ():
+            _say(f"warning: {warning}")
+    if not result.estimate.outcome.code.has_numbers:
+        _say(result.estimate.outcome.sentence)
+        raise typer.Exit(NUMERICS)
+
+
+def _show_explanation(result: Explanation, json: bool, out: Path | None) -> None:
+    from sonoyield.show.files import to_json, write_result, write_rows
+
+    if out is not None and out.suffix == ".json":
+        write_result(result.as_dict(), out)
+    elif out is not None:
+        write_rows(result.rows(), out)
+    if json:
+        typer.echo(to_json(result.as_dict()))
+    elif out is None:
+        from rich.console import Console
+
+        from sonoyield.show.explain_table import print_explanation
+
+        print_explanation(result, Console(highlight=False))
 
 
 def _show(result: Estimate, json: bool, out: Path | None, history: Path | None) -> None:

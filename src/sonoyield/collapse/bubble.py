@@ -43,6 +43,7 @@ class Bubble:
     mixture: Mapping[str, float]
     accommodation: Mapping[str, float]
     excluded_volume: bool = True
+    dense_equilibrium: bool = True
     vapour: bool = True
     uptake: bool = True
 
@@ -109,7 +110,8 @@ class Bubble:
         """Enthalpy zero of each species, J/mol (K,), linear in its elements.
 
         Zero are liquid water and, at the liquid's temperature, O2, N2 and the noble gases; the
-        zero of hydrogen follows from water, so that H2 carries its heat of combustion.
+        zero of hydrogen follows from water, so that H2 carries its heat of combustion. Elements
+        that no gas at rest holds (carbon) keep Cantera's zero.
         """
         phase = self.phase
         enthalpy = self.species[:, ENTHALPY_AT_LIQUID]
@@ -126,7 +128,7 @@ class Bubble:
                 of[element] = float(enthalpy[pure[0]] / row[pure[0]])
         liquid_water = float(enthalpy[water]) - self.liquid.latent_heat * WATER_MOLAR_MASS
         of["H"] = 0.5 * (liquid_water - of["O"])
-        return np.array([of[e] for e in phase.elements]) @ phase.atoms
+        return np.array([of.get(e, 0.0) for e in phase.elements]) @ phase.atoms
 
     @cached_property
     def constants(self) -> Array:

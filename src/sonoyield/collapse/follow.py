@@ -84,7 +84,8 @@ class _Run:
         self.implicit_only = not accuracy.split
         self.hot = HotStage(bubble, accuracy.relative)
         self.counters = dict.fromkeys(("cold_steps", "hot_steps", "evaluations", "stages"), 0)
-        self.radicals = eq.MOLES + np.array([bubble.phase.index(name) for name in ABSORBED])
+        species = bubble.phase.species
+        self.radicals = eq.MOLES + np.array([species.index(k) for k in ABSORBED if k in species])
         self.warm = warm
         self.few = QUIET_CONTENTS * float(bubble.moles.sum())
 

@@ -17,6 +17,8 @@ from numba import njit
 
 from sonoyield.collapse import equations as eq
 from sonoyield.collapse.bubble import CONTENTS_FLOOR, Bubble
+from sonoyield.collapse.dense import dense_production, net_stoichiometry
+from sonoyield.collapse.exchange import COVOLUME
 from sonoyield.describe.gas import Array
 
 IntegrationError = ct.CanteraError
@@ -95,11 +97,19 @@ class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
         self.start = np.empty(self.base + 1 + len(bubble.crossing) + eq.LEDGER)
         _pack(state, bubble.crossing, self.scales, count, self.start)
         self._unpack = partial(_unpack, bubble.crossing, self.scales, count)
-        self._fill = partial(
-            _reactor_rates, bubble.crossing, self.scales, np.zeros(count),
-            np.empty(eq.state_size(count)), np.empty(eq.state_size(count)),
-            np.empty((eq.SCRATCH, count)), *bubble.tables,
+        common = (
+            bubble.crossing, self.scales, np.zeros(count), np.empty(eq.state_size(count)),
+            np.empty(eq.state_size(count)), np.empty((eq.SCRATCH, count)), *bubble.tables,
         )  # fmt: skip
+        self.dense = bubble.excluded_volume and bubble.dense_equilibrium
+        self.chemistry_enabled = not self.dense
+        if self.dense:
+            self._fill = partial(
+                _dense_rates, *net_stoichiometry(self.phase), bubble.species[:, COVOLUME].copy(),
+                *common,
+            )  # fmt: skip
+        else:
+            self._fill = partial(_reactor_rates, *common)
 
     def after_initialize(self, t0: float) -> None:  # noqa: ARG002 - Cantera's signature
         self.n_vars += len(self.start) - self.base
@@ -112,7 +122,14 @@ class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
 
     def after_eval(self, t: float, left: Any, right: Any) -> None:
         self.evaluations += 1
-        self._fill(t, self.trial, np.asarray(left), np.asarray(right))
+        if self.dense:
+            gas = self.phase
+            self._fill(
+                t, self.trial, np.asarray(left), np.asarray(right),
+                gas.forward_rates_of_progress, gas.reverse_rates_of_progress,
+            )  # fmt: skip
+        else:
+            self._fill(t, self.trial, np.asarray(left), np.asarray(right))
 
     def before_component_name(self, i: int) -> str | None:
         return f"bubble state {i - self.base}" if i >= self.base else None
@@ -191,3 +208,25 @@ def _reactor_rates(
     at += 1 + crossing.size
     for i in range(eq.LEDGER):
         right[at + i] = slopes[eq.MOLES + 2 * count + i] * scales[1]
+
+
+@njit(cache=True, error_model="numpy")
+def _dense_rates(
+    ends: Any, members: Any, coefficients: Array, covolume: Array, crossing: Any, scales: Array,
+    production: Array, state: Array, slopes: Array, scratch: Array, constants: Array,
+    species: Array, nasa: Array, conductivity: Array, diffusivity: Array, time: float, y: Array,
+    left: Array, right: Array, forward: Array, reverse: Array,
+) -> None:
+    """As ``_reactor_rates``, with the production of the dense gas instead of Cantera's net one."""
+    count = production.size
+    _unpack(crossing, scales, count, y, state)
+    dense_production(
+        forward, reverse, ends, members, coefficients, y[1],
+        state[eq.MOLES : eq.MOLES + count], covolume, scratch[0], production,
+    )
+    for k in range(count):
+        right[OWN + k] = production[k] / KILO
+    _reactor_rates(
+        crossing, scales, production, state, slopes, scratch, constants, species, nasa,
+        conductivity, diffusivity, time, y, left, right,
+    )
