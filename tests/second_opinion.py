@@ -54,6 +54,7 @@ class Case:
     vapour: bool = True
     uptake: bool = True
     excluded_volume: bool = True
+    dense_equilibrium: bool = True
     covolumes: dict[str, float] = field(default_factory=dict)
     # Moves the zero of `carried` and `stored` only: 43.99 kJ/mol at 25 degC (IAPWS-95).
     latent_heat: float = 43.99e3
@@ -156,6 +157,10 @@ class _Bubble:
         covolumes = case.covolumes if case.excluded_volume else {}
         self.covolume = np.array([covolumes.get(name, 0.0) for name in self.names])
         self.sums = np.array([np.ones(self.count), self.mass, self.covolume])
+        self.dense = case.dense_equilibrium and bool(self.covolume.any())
+        net = self.gas.product_stoich_coeffs - self.gas.reactant_stoich_coeffs
+        self.net = np.ascontiguousarray(net)
+        self.joins = net.sum(axis=0) < 0.0
         self._set_wall()
         self._set_transport()
         contents = self._contents()
@@ -258,6 +263,19 @@ class _Bubble:
         diffusion = values[self.count :].reshape(self.others.shape)
         return conductivity, (self.others / diffusion) @ x / (temperature * root)
 
+    def _dense_production(self, volume: float, free: float, amount: float) -> Array:
+        """Production (mol/s) with activities c_k V/(V-B) exp(b_k p/RT), the gas being set.
+
+        The whole factor falls on the direction that joins particles, else on the reverse one.
+        """
+        activity = math.log(volume / free) + self.covolume * (amount / free)
+        shift = np.exp(np.where(self.joins, -1.0, 1.0) * (activity @ self.net))
+        forward = self.gas.forward_rates_of_progress
+        reverse = self.gas.reverse_rates_of_progress
+        forward[self.joins] *= shift[self.joins]
+        reverse[~self.joins] *= shift[~self.joins]
+        return np.asarray(self.net @ (forward - reverse)) * (1e3 * volume)
+
     def slopes(self, t: float, y: Array) -> Array:
         """Right-hand side."""
         case, gas, crossing, count = self.case, self.gas, self.crossing, self.count
@@ -277,7 +295,10 @@ class _Bubble:
         warm = max(temperature, COLDEST)
         gas.set_unnormalized_mole_fractions(x)
         gas.TD = temperature, mass / volume
-        gained = gas.net_production_rates * (1e3 * volume)
+        if self.dense:
+            gained = self._dense_production(volume, free, amount)
+        else:
+            gained = gas.net_production_rates * (1e3 * volume)
         if temperature < warm:  # rates go on below 200 K, the thermo polynomials do not
             gas.TD = warm, mass / volume
         enthalpy, cp = self._thermo(temperature, warm)

@@ -5,7 +5,7 @@ from __future__ import annotations
 import os
 import signal
 import sys
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from io import TextIOWrapper
 from pathlib import Path
@@ -16,6 +16,8 @@ import typer
 from sonoyield._version import __version__
 
 if TYPE_CHECKING:
+    from sonoyield.decide.explain import Explanation
+    from sonoyield.describe.protocol import Protocol
     from sonoyield.expose.estimate import Estimate
 
 BAD_INPUT, NUMERICS, INTERRUPTED = 2, 3, 130
@@ -45,6 +47,12 @@ HistoryPath = Annotated[
 ]
 Both = Annotated[bool, typer.Option("--both", help="Run both couplings; report the difference.")]
 Quiet = Annotated[bool, typer.Option("--quiet", help="No progress and no warnings on stderr.")]
+
+
+SpeciesNames = Annotated[
+    list[str] | None,
+    typer.Option("--species", metavar="NAME", help="Species to explain; may be repeated."),
+]
 
 
 def main() -> None:
@@ -84,21 +92,41 @@ def estimate(
 ) -> None:
     """Radicals per collapse and per exposure of one protocol."""
     _check_targets(out, history)
-    try:
-        result = _run(file, both, quiet)
+    with _interruptible():
+        protocol = _load(file, quiet)
+        from sonoyield.expose.estimate import estimate as run
+
+        with _left_at_once():
+            result = run(protocol, both=both)
         _show(result, json, out, history)
-    except KeyboardInterrupt:
-        _say("interrupted")
-        raise typer.Exit(INTERRUPTED) from None
-    if not quiet:
-        for warning in result.warnings if json else ():
-            _say(f"warning: {warning}")
-    if not result.outcome.code.has_numbers:
-        _say(result.outcome.sentence)
-        raise typer.Exit(NUMERICS)
+    _finish(result, result.warnings, json, quiet)
 
 
-def _run(file: Path, both: bool, quiet: bool) -> Estimate:
+@app.command()
+def explain(
+    file: ProtocolFile,
+    species: SpeciesNames = None,
+    json: AsJson = False,
+    out: Out = None,
+    quiet: Quiet = False,
+) -> None:
+    """Reactions that make and destroy what is delivered, and the rates that matter."""
+    _check_targets(out, None)
+    with _interruptible():
+        protocol = _load(file, quiet)
+        from sonoyield.decide.explain import SpeciesError
+        from sonoyield.decide.explain import explain as run
+
+        try:
+            with _left_at_once():
+                result = run(protocol, tuple(dict.fromkeys(species or ("OH", "H2O2"))))
+        except SpeciesError as error:
+            _refuse(f"--species {error}")
+        _show_explanation(result, json, out)
+    _finish(result.estimate, result.warnings, json, quiet)
+
+
+def _load(file: Path, quiet: bool) -> Protocol:
     from sonoyield.describe.errors import ProtocolError
     from sonoyield.describe.protocol import Protocol
 
@@ -108,12 +136,25 @@ def _run(file: Path, both: bool, quiet: bool) -> Estimate:
         _refuse(str(error))
     if not quiet:
         _tell_first_compilation()
-    # SUNDIALS, below Cantera, prints its warnings on stdout unless told where.
-    os.environ.setdefault("SUNLOGGER_WARNING_FILENAME", os.devnull)
-    from sonoyield.expose.estimate import estimate as run
+    return protocol
 
-    with _left_at_once():
-        return run(protocol, both=both)
+
+def _finish(result: Estimate, warnings: Sequence[str], json: bool, quiet: bool) -> None:
+    if not quiet:
+        for warning in warnings if json else ():
+            _say(f"warning: {warning}")
+    if not result.outcome.code.has_numbers:
+        _say(result.outcome.sentence)
+        raise typer.Exit(NUMERICS)
+
+
+@contextmanager
+def _interruptible() -> Iterator[None]:
+    try:
+        yield
+    except KeyboardInterrupt:
+        _say("interrupted")
+        raise typer.Exit(INTERRUPTED) from None
 
 
 @contextmanager
@@ -137,6 +178,26 @@ def _left_at_once() -> Iterator[None]:
         yield
     finally:
         signal.signal(signal.SIGINT, before)
+
+
+def _show_explanation(result: Explanation, json: bool, out: Path | None) -> None:
+    from sonoyield.show.files import to_json, write_result, write_rows
+
+    try:
+        if out is not None and out.suffix == ".json":
+            write_result(result.as_dict(), out)
+        elif out is not None:
+            write_rows(result.rows(), out)
+    except OSError as error:
+        _refuse(f"{error.filename or out}: cannot be written: {error.strerror}")
+    if json:
+        typer.echo(to_json(result.as_dict()))
+    elif out is None:
+        from rich.console import Console
+
+        from sonoyield.show.explain_table import print_explanation
+
+        print_explanation(result, Console(highlight=False))
 
 
 def _show(result: Estimate, json: bool, out: Path | None, history: Path | None) -> None:

@@ -103,19 +103,50 @@ def test_saline_default_and_duty_and_accommodation() -> None:
     assert [accommodation.of(name) for name in ("H2O", "OH", "H2O2")] == [0.4, 0.2, 0.1]
 
 
-@pytest.mark.parametrize("name", ["argon", "Argon", "AR", "helium", "krypton", "xenon", "oxygen"])
+SINGLE = {"argon": "AR", "Argon": "AR", "Ar": "AR", "helium": "HE", "krypton": "KR", "xenon": "XE"}
+SINGLE |= {"oxygen": "O2", "hydrogen": "H2", "h2": "H2", "nitrogen": "N2", "N2": "N2"}
+
+
+@pytest.mark.parametrize("name", SINGLE)
 def test_single_gases(name: str) -> None:
     data = minimal()
     data["gas"]["mixture"] = name
-    species = {"argon": "AR", "helium": "HE", "krypton": "KR", "xenon": "XE", "oxygen": "O2"}
-    assert Protocol.from_dict(data).gas.mixture == {species.get(name.lower(), "AR"): 1.0}
+    assert Protocol.from_dict(data).gas.mixture == {SINGLE[name]: 1.0}
+
+
+def test_air_is_dry_air_without_its_carbon_dioxide() -> None:
+    """Volume per cent of IUPAC Gold Book C01214, which leave 0.036 % to CO2 and traces."""
+    data = minimal()
+    data["gas"]["mixture"] = "air"
+    air = Protocol.from_dict(data).gas.mixture
+    assert sum(air.values()) == pytest.approx(1.0, abs=1e-12)
+    for name, per_cent in {"N2": 78.084, "O2": 20.946, "AR": 0.934}.items():
+        assert 100 * air[name] == pytest.approx(per_cent * 100 / 99.964, rel=1e-9)
+
+
+def test_air_in_a_mixture() -> None:
+    data = minimal()
+    data["gas"]["mixture"] = {"air": 0.5, "argon": 0.5}
+    mixture = Protocol.from_dict(data).gas.mixture
+    assert list(mixture) == ["N2", "O2", "AR"]
+    assert sum(mixture.values()) == pytest.approx(1.0, abs=1e-12)
+    assert mixture["AR"] == pytest.approx(0.5 + 0.00467, abs=1e-5)
+
+
+def test_mechanism_by_name() -> None:
+    data = minimal()
+    data["model"] = {"mechanism": "h2o_o2_n2"}
+    assert Protocol.from_dict(data).model.mechanism == "h2o_o2_n2"
+    data["model"] = {"accommodation": {"NO": 0.01, "radicals": 0.3}}
+    accommodation = Protocol.from_dict(data).model.accommodation
+    assert [accommodation.of(name) for name in ("NO", "NO2")] == [0.01, 0.3]
 
 
 def test_mixture_is_normalised() -> None:
     data = minimal()
     data["gas"]["mixture"] = {"xenon": 0.3, "o2": 0.7 + 5e-7, "HE": 0}
     mixture = Protocol.from_dict(data).gas.mixture
-    assert list(mixture) == ["XE", "O2"]
+    assert list(mixture) == ["O2", "XE"]
     assert sum(mixture.values()) == pytest.approx(1.0, abs=1e-15)
 
 
@@ -242,7 +273,10 @@ def valid(draw: st.DrawFn) -> dict[str, Any]:
     length = draw(st.floats(shortest, every))
     duration = draw(st.floats(every * 1.01, 2.5e6))
     shares = draw(
-        st.dictionaries(st.sampled_from(["AR", "HE", "KR", "XE", "O2"]), st.floats(0.01, 1.0))
+        st.dictionaries(
+            st.sampled_from(["AR", "HE", "KR", "XE", "O2", "N2", "H2", "air"]),
+            st.floats(0.01, 1.0),
+        )
     )
     total = sum(shares.values())
     data: dict[str, Any] = {

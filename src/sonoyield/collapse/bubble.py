@@ -43,6 +43,7 @@ class Bubble:
     mixture: Mapping[str, float]
     accommodation: Mapping[str, float]
     excluded_volume: bool = True
+    dense_equilibrium: bool = True
     vapour: bool = True
     uptake: bool = True
 
@@ -50,6 +51,11 @@ class Bubble:
     def period(self) -> float:
         """Acoustic period, s."""
         return 1.0 / self.frequency
+
+    @property
+    def dense(self) -> bool:
+        """Whether excluded volume shifts the chemical equilibrium, as ``dense`` says."""
+        return self.excluded_volume and self.dense_equilibrium
 
     @property
     def rest_pressure(self) -> float:
@@ -109,7 +115,8 @@ class Bubble:
         """Enthalpy zero of each species, J/mol (K,), linear in its elements.
 
         Zero are liquid water and, at the liquid's temperature, O2, N2 and the noble gases; the
-        zero of hydrogen follows from water, so that H2 carries its heat of combustion.
+        zero of hydrogen follows from water, so that H2 carries its heat of combustion. Elements
+        that no gas at rest holds (carbon) keep Cantera's zero.
         """
         phase = self.phase
         enthalpy = self.species[:, ENTHALPY_AT_LIQUID]
@@ -126,7 +133,7 @@ class Bubble:
                 of[element] = float(enthalpy[pure[0]] / row[pure[0]])
         liquid_water = float(enthalpy[water]) - self.liquid.latent_heat * WATER_MOLAR_MASS
         of["H"] = 0.5 * (liquid_water - of["O"])
-        return np.array([of[e] for e in phase.elements]) @ phase.atoms
+        return np.array([of.get(e, 0.0) for e in phase.elements]) @ phase.atoms
 
     @cached_property
     def constants(self) -> Array:
@@ -176,13 +183,13 @@ class Bubble:
     def speed_scale(self) -> float:
         """Wall speed below which relative accuracy is not asked for, m/s."""
         drive = self.pressure_amplitude / self.ambient_pressure
-        return 0.1 * max(drive, 1e-6) * self.radius * 2.0 * pi * self.frequency
+        return 0.1 * max(drive, 1e-4) * self.radius * 2.0 * pi * self.frequency
 
     @property
     def energy_scale(self) -> float:
         """Energy below which relative accuracy is not asked for, J."""
         drive = min(self.pressure_amplitude / self.ambient_pressure, 1.0)
-        return max(drive, 1e-3) ** 2 * self.ambient_pressure * self.radius**3
+        return 30.0 * max(drive, 1e-3) ** 2 * self.ambient_pressure * self.radius**3
 
     def _accommodation_of(self, name: str) -> float | None:
         if name == "H2O":
@@ -192,5 +199,5 @@ class Bubble:
         return self.accommodation[name if name in self.accommodation else "radicals"]
 
 
-CONTENTS_FLOOR = 1e-4  # of the contents; times the relative tolerance it is a part of a molecule
+CONTENTS_FLOOR = 1e-3  # of the contents; times the relative tolerance it is a few molecules
 _STANDARD = ("O2", "N2", "AR", "HE", "KR", "XE")

@@ -1,10 +1,19 @@
-"""Whether the compiled stages are on disk already, asked before the compiler is imported."""
+"""The compiled stages on disk: whether they are there, and that they are not out of date.
+
+The compiler keeps what it has compiled for a function until that function's own file changes. A
+function called from another file is compiled into its caller, so a change there would go unseen:
+whatever was compiled from other sources than those that are here is thrown away.
+"""
 
 from __future__ import annotations
 
 import hashlib
 import os
+from contextlib import suppress
 from pathlib import Path
+
+HERE = Path(__file__).parent
+STAMP = "sonoyield-sources.txt"
 
 
 def is_cached() -> bool:
@@ -12,13 +21,34 @@ def is_cached() -> bool:
     return any(any(place.glob("cold.integrate_frozen-*.nbc")) for place in _places())
 
 
+def discard_stale() -> None:
+    """Delete compiled stages that were made from other sources than these."""
+    sources = _fingerprint()
+    for place in _places():
+        with suppress(OSError):  # a place that may not be written to is not ours to keep
+            _discard(place, sources)
+
+
+def _discard(place: Path, sources: str) -> None:
+    stamp = place / STAMP
+    if not place.is_dir() or (stamp.is_file() and stamp.read_text() == sources):
+        return
+    for pattern in ("*.nbi", "*.nbc"):
+        for file in place.glob(pattern):
+            file.unlink(missing_ok=True)
+    stamp.write_text(sources)
+
+
+def _fingerprint() -> str:
+    digest = hashlib.sha256()
+    for file in sorted([*HERE.glob("*.py"), HERE.parent / "describe" / "gas.py"]):
+        digest.update(file.read_bytes())
+    return digest.hexdigest()
+
+
 def _places() -> list[Path]:
-    here = Path(__file__).parent
-    places = [here / "__pycache__"]
+    mark = f"collapse_{hashlib.sha1(str(HERE).encode()).hexdigest()}"
     chosen = os.environ.get("NUMBA_CACHE_DIR")
-    mark = f"collapse_{hashlib.sha1(str(here).encode()).hexdigest()}"
     if chosen:
-        places = [Path(chosen) / mark]
-    else:
-        places.append(Path.home() / ".cache" / "numba" / mark)
-    return places
+        return [Path(chosen) / mark]
+    return [HERE / "__pycache__", Path.home() / ".cache" / "numba" / mark]

@@ -17,6 +17,7 @@ import numpy as np
 from sonoyield.collapse import equations as eq
 from sonoyield.collapse.bubble import CONTENTS_FLOOR, Bubble
 from sonoyield.collapse.compression import ROOM, Compression, reactor_rates
+from sonoyield.collapse.dense import dense_production, net_stoichiometry
 from sonoyield.collapse.exchange import COVOLUME
 from sonoyield.collapse.follow import FAILED, STEP_LIMIT, Accuracy, _Run
 from sonoyield.collapse.history import History, Recorder
@@ -30,6 +31,7 @@ STOPS = (FAILED, STEP_LIMIT)
 # Share of the volume that the molecules' covolumes may fill. Steam that splits makes more of them,
 # and in the strongest collapses they would not fit where the frozen contents went.
 FULL = 0.99
+COLD_LIMIT = 10  # times the limit on the reactor's steps: explicit ones cost a tenth
 SHARE = 0.01  # of the tolerance asked for: the volume is a state of the reactor and holds to it
 
 
@@ -98,7 +100,8 @@ class _FrozenRun(_Run):
         if self.counters["cold_steps"] == before:
             return FAILED
         self.implicit_only = False  # the record was full, or one more attempt decides
-        return STEP_LIMIT if self.counters["cold_steps"] >= self.accuracy.steps else ""
+        most = COLD_LIMIT * self.accuracy.steps
+        return STEP_LIMIT if self.counters["cold_steps"] >= most else ""
 
 
 def _react(frozen: History, begin: int, accuracy: Accuracy) -> OneWayHistory:
@@ -231,6 +234,11 @@ class _CompressedReactor(ct.ExtensibleIdealGasMoleReactor):
             reactor_rates, bubble.crossing, self.scale, compression.nodes,
             np.empty((ROOM, count)), *bubble.tables[:3], bubble.phase.diffusivity,
         )  # fmt: skip
+        self.dense = bubble.dense
+        self.chemistry_enabled = not self.dense
+        self.gas, self.covolume = self.phase, bubble.species[:, COVOLUME].copy()
+        self.net = net_stoichiometry(self.gas)
+        self.production, self.logarithms = np.empty(count), np.empty(count)
         self.start = np.zeros(self.base + len(self.crossing) + 1)
         self.start[0] = state[eq.TEMPERATURE]
         self.start[1] = 4.0 / 3.0 * np.pi * state[eq.RADIUS] ** 3
@@ -248,7 +256,15 @@ class _CompressedReactor(ct.ExtensibleIdealGasMoleReactor):
 
     def after_eval(self, t: float, left: Any, right: Any) -> None:
         self.evaluations += 1
-        self.rates(t, self.trial, np.asarray(left), np.asarray(right))
+        slopes = np.asarray(right)
+        if self.dense:
+            dense_production(
+                self.gas.forward_rates_of_progress, self.gas.reverse_rates_of_progress, *self.net,
+                self.trial[1], self.trial[OWN : self.base] * KILO, self.covolume, self.logarithms,
+                self.production,
+            )  # fmt: skip
+            slopes[OWN : self.base] = self.production / KILO
+        self.rates(t, self.trial, np.asarray(left), slopes)
 
     def before_component_name(self, i: int) -> str | None:
         return f"exchange {i - self.base}" if i >= self.base else None

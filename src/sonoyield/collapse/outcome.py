@@ -5,15 +5,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 from enum import StrEnum
 
-import numpy as np
-
 from sonoyield.collapse.follow import FAILED, NO_MAXIMUM, PATIENCE, STEP_LIMIT
 from sonoyield.collapse.history import History
 from sonoyield.collapse.ledger import ENERGY_LIMIT, Balance
+from sonoyield.collapse.thermo_range import thermo_range
 from sonoyield.collapse.yields import Collapse
 
 MACH_LIMIT = 1.0  # of the sound speed in the liquid; Keller-Miksis is first order in it
-TRACE = 1e-3  # mole fraction below which a species' thermo range does not decide
 
 
 class Code(StrEnum):
@@ -39,16 +37,6 @@ class Outcome:
 
     code: Code
     sentence: str
-
-
-@dataclass(frozen=True)
-class BeyondThermo:
-    """A species' stay above the range of its thermo source: K, s, largest mole fraction there."""
-
-    species: str
-    limit_K: float
-    time_s: float
-    largest_fraction: float
 
 
 def outcome_of(history: History, collapse: Collapse, balance: Balance) -> Outcome:
@@ -81,27 +69,6 @@ def outcome_of(history: History, collapse: Collapse, balance: Balance) -> Outcom
     return _judged_by_range(history, collapse)
 
 
-def beyond_thermo(history: History) -> list[BeyondThermo]:
-    """Species whose thermo source ends below the temperature the gas reached while they held
-    more than a trace of it."""
-    phase = history.bubble.phase
-    fractions = history.moles / history.moles.sum(axis=1, keepdims=True)
-    durations = np.gradient(history.times) if len(history.times) > 1 else np.zeros(1)
-    found = []
-    for k, name in enumerate(phase.species):
-        above = history.temperature > phase.source_limit[k]
-        if above.any() and fractions[above, k].max() > TRACE:
-            found.append(
-                BeyondThermo(
-                    name,
-                    float(phase.source_limit[k]),
-                    float(durations[above].sum()),
-                    float(fractions[above, k].max()),
-                )
-            )
-    return found
-
-
 def _judged_by_range(history: History, collapse: Collapse) -> Outcome:
     mach = collapse.peak_wall_speed_m_s / history.bubble.liquid.sound_speed
     if mach > MACH_LIMIT:
@@ -110,14 +77,14 @@ def _judged_by_range(history: History, collapse: Collapse) -> Outcome:
             f"The wall reaches {mach:.2f} times the liquid's sound speed, beyond the radial "
             "equation's range (1); read temperatures and yields as orders of magnitude.",
         )
-    beyond = beyond_thermo(history)
+    beyond = [one for one in thermo_range(history) if one.matters]
     if beyond:
         names = ", ".join(one.species for one in beyond)
         return Outcome(
             Code.OUT_OF_RANGE,
             f"The gas reaches {collapse.peak_temperature_K:.0f} K, above the "
             f"{min(one.limit_K for one in beyond):.0f} K where the thermo data of {names} end; "
-            "beyond it heat capacities are held, and yields carry that error.",
+            "beyond it they are extrapolated, and yields carry that error.",
         )
     if not collapse.inertial:
         return Outcome(

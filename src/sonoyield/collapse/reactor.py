@@ -7,6 +7,7 @@ of the same implicit integrator, and its energy balance is replaced by ours (Nob
 
 from __future__ import annotations
 
+import os
 from functools import partial
 from math import pi
 from typing import Any
@@ -17,7 +18,12 @@ from numba import njit
 
 from sonoyield.collapse import equations as eq
 from sonoyield.collapse.bubble import CONTENTS_FLOOR, Bubble
+from sonoyield.collapse.dense import dense_production, net_stoichiometry
+from sonoyield.collapse.exchange import COVOLUME
 from sonoyield.describe.gas import Array
+
+# The integrator below Cantera prints its warnings on stdout unless told where.
+os.environ.setdefault("SUNLOGGER_WARNING_FILENAME", os.devnull)
 
 IntegrationError = ct.CanteraError
 
@@ -90,16 +96,26 @@ class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
             [self.floor / bubble.speed_scale, self.floor / bubble.energy_scale]
         )
         self.base = OWN + count
-        self.energy_enabled = False  # the energy balance is ours
+        # The energy balance is ours; with Cantera's off the left-hand sides stay at one.
+        self.energy_enabled = False
+        self.gas = self.phase
         self.evaluations = 0
         self.start = np.empty(self.base + 1 + len(bubble.crossing) + eq.LEDGER)
         _pack(state, bubble.crossing, self.scales, count, self.start)
         self._unpack = partial(_unpack, bubble.crossing, self.scales, count)
-        self._fill = partial(
-            _reactor_rates, bubble.crossing, self.scales, np.zeros(count),
-            np.empty(eq.state_size(count)), np.empty(eq.state_size(count)),
-            np.empty((eq.SCRATCH, count)), *bubble.tables,
+        common = (
+            bubble.crossing, self.scales, np.zeros(count), np.empty(eq.state_size(count)),
+            np.empty(eq.state_size(count)), np.empty((eq.SCRATCH, count)), *bubble.tables,
         )  # fmt: skip
+        self.dense = bubble.dense
+        self.chemistry_enabled = not self.dense
+        if self.dense:
+            self._fill = partial(
+                _dense_rates, *net_stoichiometry(self.phase), bubble.species[:, COVOLUME].copy(),
+                *common,
+            )  # fmt: skip
+        else:
+            self._fill = partial(_reactor_rates, *common)
 
     def after_initialize(self, t0: float) -> None:  # noqa: ARG002 - Cantera's signature
         self.n_vars += len(self.start) - self.base
@@ -110,9 +126,16 @@ class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
     def after_update_state(self, y: Any) -> None:
         self.trial = np.asarray(y)
 
-    def after_eval(self, t: float, left: Any, right: Any) -> None:
+    def after_eval(self, t: float, left: Any, right: Any) -> None:  # noqa: ARG002 - likewise
         self.evaluations += 1
-        self._fill(t, self.trial, np.asarray(left), np.asarray(right))
+        if self.dense:
+            gas = self.gas
+            self._fill(
+                t, self.trial, np.asarray(right), gas.forward_rates_of_progress,
+                gas.reverse_rates_of_progress,
+            )  # fmt: skip
+        else:
+            self._fill(t, self.trial, np.asarray(right))
 
     def before_component_name(self, i: int) -> str | None:
         return f"bubble state {i - self.base}" if i >= self.base else None
@@ -168,7 +191,7 @@ def _unpack(crossing: Any, scales: Array, count: int, y: Array, state: Array) ->
 def _reactor_rates(
     crossing: Any, scales: Array, production: Array, state: Array, slopes: Array, scratch: Array,
     constants: Array, species: Array, nasa: Array, conductivity: Array, diffusivity: Array,
-    time: float, y: Array, left: Array, right: Array,
+    time: float, y: Array, right: Array,
 ) -> None:
     """Turn Cantera's production (kmol/s, in ``right``) into the whole right-hand side."""
     count = production.size
@@ -179,7 +202,6 @@ def _reactor_rates(
         time, state, production, constants, species, nasa, conductivity, diffusivity,
         scratch, slopes,
     )
-    left[0] = 1.0
     right[0] = slopes[eq.TEMPERATURE]
     right[1] = 4.0 * pi * state[eq.RADIUS] ** 2 * state[eq.SPEED]
     for k in range(count):
@@ -191,3 +213,25 @@ def _reactor_rates(
     at += 1 + crossing.size
     for i in range(eq.LEDGER):
         right[at + i] = slopes[eq.MOLES + 2 * count + i] * scales[1]
+
+
+@njit(cache=True, error_model="numpy")
+def _dense_rates(
+    ends: Any, members: Any, coefficients: Array, covolume: Array, crossing: Any, scales: Array,
+    production: Array, state: Array, slopes: Array, scratch: Array, constants: Array,
+    species: Array, nasa: Array, conductivity: Array, diffusivity: Array, time: float, y: Array,
+    right: Array, forward: Array, reverse: Array,
+) -> None:
+    """As ``_reactor_rates``, with the production of the dense gas instead of Cantera's net one."""
+    count = production.size
+    _unpack(crossing, scales, count, y, state)
+    dense_production(
+        forward, reverse, ends, members, coefficients, y[1],
+        state[eq.MOLES : eq.MOLES + count], covolume, scratch[0], production,
+    )
+    for k in range(count):
+        right[OWN + k] = production[k] / KILO
+    _reactor_rates(
+        crossing, scales, production, state, slopes, scratch, constants, species, nasa,
+        conductivity, diffusivity, time, y, right,
+    )

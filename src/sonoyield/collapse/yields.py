@@ -14,6 +14,7 @@ from sonoyield.describe.gas import AVOGADRO
 OXIDANT = {"OH": 1.0, "H2O2": 2.0, "HO2": 1.0, "O": 2.0, "O3": 2.0}
 OXIDANT_FORMULA = "OH + 2 H2O2 + HO2 + 2 O + 2 O3, delivered, in OH equivalents"
 REPORTED = ("OH", "H2O2", "HO2", "O", "O3", "H", "H2")
+REPORTED_IF_THERE = ("NO", "NO2", "HONO", "HONO2", "N2O")  # by mechanisms with nitrogen
 
 
 @dataclass(frozen=True)
@@ -68,9 +69,16 @@ def collapse_of(history: History) -> Collapse:
 
 
 def counts_of(history: History) -> dict[str, Counts]:
-    """Molecules per collapse of each reported species: means over the run's windows."""
-    phase = history.bubble.phase
-    return {name: _counts(history, phase.index(name)) for name in REPORTED}
+    """Molecules per collapse of each reported species: means over the run's windows.
+
+    Zero for O3 where the mechanism does not hold it; nitrogen species only where it does.
+    """
+    species = history.bubble.phase.species
+    names = (*REPORTED, *(name for name in REPORTED_IF_THERE if name in species))
+    return {
+        name: _counts(history, species.index(name)) if name in species else Counts(0.0, 0.0, 0.0)
+        for name in names
+    }
 
 
 def oxidant_per_collapse(counts: dict[str, Counts]) -> float:

@@ -3,21 +3,19 @@
 from __future__ import annotations
 
 import difflib
+import os
 from collections.abc import Collection, Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
+from pydantic import ValidationInfo
+
 from sonoyield.describe.errors import RefusalError, show_value
-from sonoyield.describe.later import LATER_GASES, LATER_SPECIES, NITROGEN
+from sonoyield.describe.gases import AT_REST, COMPOSITIONS, REFUSED_GASES, gas_name
 
 SUM_TOLERANCE = 1e-6
-SPECIES_OF_GAS: dict[str, str] = {
-    "argon": "AR",
-    "helium": "HE",
-    "krypton": "KR",
-    "xenon": "XE",
-    "oxygen": "O2",
-}
+AUTO = "auto"
+SHIPPED = ("h2o_o2", "h2o_o2_n2")  # mechanisms that come with the package
 
 
 @dataclass(frozen=True)
@@ -26,15 +24,14 @@ class ChoiceReader:
 
     options: tuple[str, ...]
     later: Mapping[str, str] = field(default_factory=dict)
-    otherwise: str = ""
 
     def __call__(self, value: Any) -> str:
         if not isinstance(value, str):
             raise RefusalError("a text is due", self.allowed)
         if value in self.options:
             return value
-        if value in self.later or self.otherwise:
-            raise RefusalError(self.later.get(value, self.otherwise), self.allowed)
+        if value in self.later:
+            raise RefusalError(self.later[value], self.allowed)
         raise RefusalError(
             "not one of the choices" + did_you_mean(value, self.options), self.allowed
         )
@@ -105,52 +102,77 @@ class TextReader:
 
 
 @dataclass(frozen=True)
+class MechanismReader:
+    """Takes ``auto``, a shipped mechanism or the path of a Cantera file.
+
+    A relative path counts from the folder of the protocol file, which comes as the context of the
+    validation; the file itself is checked once the gas is known.
+    """
+
+    allowed: str = '"auto", "h2o_o2", "h2o_o2_n2", or the path of a Cantera file (.yaml)'
+
+    def __call__(self, value: Any, info: ValidationInfo) -> str:
+        if not isinstance(value, str):
+            raise RefusalError("a text is due", self.allowed)
+        names = (AUTO, *SHIPPED)
+        if value in names:
+            return value
+        if not is_file(value):
+            raise RefusalError("not a mechanism" + did_you_mean(value, names), self.allowed)
+        return os.path.join((info.context or {}).get("folder", ""), value)
+
+
+@dataclass(frozen=True)
 class MixtureReader:
     """Takes a gas name or a table of shares; gives mole fractions by species that sum to 1."""
 
     @property
     def allowed(self) -> str:
-        names = ", ".join(f'"{name}"' for name in SPECIES_OF_GAS)
+        names = ", ".join(f'"{name}"' for name in COMPOSITIONS)
         return f"{names}, or a table of shares that sum to 1, e.g. {{ AR = 0.8, O2 = 0.2 }}"
 
     def __call__(self, value: Any) -> dict[str, float]:
         if isinstance(value, str):
-            return {self._species(value): 1.0}
+            return self._sum({self._gas(value): 1.0})
         if not isinstance(value, Mapping):
             raise RefusalError("a gas name or a table of shares is due", self.allowed)
         shares = self._shares(value)
         total = sum(shares.values())
         if not abs(total - 1.0) <= SUM_TOLERANCE:
             raise RefusalError(f"the shares sum to {total:.9g}", self.allowed)
-        kept = {name: shares[name] for name in SPECIES_OF_GAS.values() if shares.get(name)}
-        return {name: share / total for name, share in kept.items()}
+        return self._sum({name: share / total for name, share in shares.items()})
+
+    def _sum(self, shares: Mapping[str, float]) -> dict[str, float]:
+        """Mole fractions by species of what gases of given shares make together."""
+        parts = {
+            species: sum(part * COMPOSITIONS[gas].get(species, 0.0) for gas, part in shares.items())
+            for species in AT_REST
+        }
+        return {species: part for species, part in parts.items() if part > 0.0}
 
     def _shares(self, table: Mapping[Any, Any]) -> dict[str, float]:
         shares: dict[str, float] = {}
         for name, share in table.items():
-            species = self._species(str(name), key=str(name))
-            if species in shares:
-                raise RefusalError(f"{species} is given twice", self.allowed)
-            shares[species] = _share(share, str(name))
+            gas = self._gas(str(name), key=str(name))
+            if gas in shares:
+                raise RefusalError(f"{gas} is given twice", self.allowed)
+            shares[gas] = _share(share, str(name))
         return shares
 
-    def _species(self, name: str, key: str = "") -> str:
-        plain = name.strip().lower()
-        if plain in SPECIES_OF_GAS:
-            return SPECIES_OF_GAS[plain]
-        if plain.upper() in SPECIES_OF_GAS.values():
-            return plain.upper()
-        if plain in LATER_GASES:
-            raise RefusalError(LATER_GASES[plain], self.allowed, key)
-        near = did_you_mean(plain, (*SPECIES_OF_GAS, *SPECIES_OF_GAS.values()))
-        raise RefusalError(
-            f"{show_value(name)} is not a gas of this version{near}", self.allowed, key
-        )
+    def _gas(self, name: str, key: str = "") -> str:
+        gas = gas_name(name)
+        if gas in COMPOSITIONS:
+            return gas
+        if gas in REFUSED_GASES:
+            raise RefusalError(REFUSED_GASES[gas], self.allowed, key)
+        near = did_you_mean(gas, (*COMPOSITIONS, *AT_REST))
+        problem = f"{show_value(name)} is not a gas of this version{near}"
+        raise RefusalError(problem, self.allowed, key)
 
 
-def later_species(name: str) -> str:
-    """Sentence for a species of the nitrogen chemistry, empty for any other."""
-    return NITROGEN if name in LATER_SPECIES else ""
+def is_file(mechanism: str) -> bool:
+    """Whether a mechanism is the path of a Cantera file, rather than a name."""
+    return mechanism.lower().endswith((".yaml", ".yml"))
 
 
 def did_you_mean(word: str, known: Collection[str]) -> str:

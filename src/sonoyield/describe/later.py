@@ -27,30 +27,4 @@ LATER_RADIAL = {"gilmore": "the Gilmore equation is not in this version"}
 
 LATER_INTERIOR = {"resolved": "the resolved interior of the bubble is not in this version"}
 
-MECHANISM_PATH = "a mechanism of your own is not in this version"
-
 PERIODIC = "following the bubble to a periodic state is not in this version"
-
-NITROGEN = (
-    "nitrogen chemistry is not in this version's mechanism and nitrogen is never treated as inert"
-)
-
-_OTHER_GASES = {
-    "hydrogen": ("hydrogen", "h2"),
-    "ozone": ("ozone", "o3"),
-    "carbon dioxide": ("carbon dioxide", "carbon_dioxide", "co2"),
-    "methane": ("methane", "ch4"),
-}
-
-LATER_GASES: dict[str, str] = {
-    **dict.fromkeys(("air", "nitrogen", "n2"), NITROGEN),
-    **{
-        name: f"{gas} as the gas at rest is not in this version"
-        for gas, names in _OTHER_GASES.items()
-        for name in names
-    },
-}
-
-LATER_SPECIES = frozenset(
-    ("N", "NH", "NH2", "NH3", "NNH", "NO", "NO2", "NO3", "N2O", "HNO", "HONO", "HONO2")
-)

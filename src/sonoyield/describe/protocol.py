@@ -15,6 +15,7 @@ from sonoyield.describe.errors import MISSING, ProtocolError, RefusalError
 from sonoyield.describe.fields import (
     ChoiceReader,
     CountReader,
+    MechanismReader,
     MixtureReader,
     ShareReader,
     SwitchReader,
@@ -35,7 +36,7 @@ FieldKind = Annotated[str, BeforeValidator(ChoiceReader(("uniform",), later.LATE
 Radial = Annotated[str, BeforeValidator(ChoiceReader(("keller_miksis",), later.LATER_RADIAL))]
 Interior = Annotated[str, BeforeValidator(ChoiceReader(("mixed",), later.LATER_INTERIOR))]
 Coupling = Annotated[str, BeforeValidator(ChoiceReader(("two_way", "one_way")))]
-Mechanism = Annotated[str, BeforeValidator(ChoiceReader(("auto",), otherwise=later.MECHANISM_PATH))]
+Mechanism = Annotated[str, BeforeValidator(MechanismReader())]
 Collapses = Annotated[int, BeforeValidator(CountReader(1, 1000, {"periodic": later.PERIODIC}))]
 
 
@@ -126,6 +127,18 @@ class Accommodation(Section):
     HO2: Share | None = None
     H2O2: Share | None = None
     O3: Share | None = None
+    N: Share | None = None
+    NH: Share | None = None
+    NH2: Share | None = None
+    NH3: Share | None = None
+    NNH: Share | None = None
+    NO: Share | None = None
+    NO2: Share | None = None
+    NO3: Share | None = None
+    N2O: Share | None = None
+    HNO: Share | None = None
+    HONO: Share | None = None
+    HONO2: Share | None = None
 
     def of(self, species: str) -> float:
         """Value for one species, ``"H2O"`` included; ``radicals`` where none is given."""
@@ -178,12 +191,13 @@ class Protocol(Section):
     def from_dict(cls, data: Mapping[str, Any], file: str = "") -> Protocol:
         """Check a table as TOML gives it, quantities as texts with units.
 
-        ``file`` is named in messages; raises ``ProtocolError``.
+        ``file`` is named in messages, and paths in the table count from its folder; raises
+        ``ProtocolError``.
         """
         if not isinstance(data, Mapping):
             raise ProtocolError(file, "", MISSING, "a table of tables is due")
         try:
-            return cls.model_validate(dict(data))
+            return cls.model_validate(dict(data), context={"folder": os.path.dirname(file)})
         except ValidationError as error:
             raise protocol_error(error, cls, data, file) from None
 

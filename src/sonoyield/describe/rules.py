@@ -6,6 +6,7 @@ import math
 from typing import TYPE_CHECKING
 
 from sonoyield.describe.errors import RefusalError
+from sonoyield.describe.fields import AUTO, SHIPPED
 from sonoyield.describe.liquid import liquid_state
 from sonoyield.describe.units import DIMENSIONS, format_quantity
 
@@ -13,6 +14,7 @@ if TYPE_CHECKING:
     from sonoyield.describe.protocol import Protocol
 
 LARGEST_GAS_SHARE = 0.1  # of the liquid's volume; above it bubbles do not act one by one
+MECHANISM = "model.mechanism"
 ROUNDING = 1e-9  # equal times written in different units stay equal
 
 
@@ -24,6 +26,7 @@ def check_rules(protocol: Protocol) -> None:
     _check_times(protocol)
     _check_boiling(protocol)
     _check_filling(protocol)
+    _check_mechanism(protocol)
 
 
 def _check_times(protocol: Protocol) -> None:
@@ -68,6 +71,22 @@ def _check_filling(protocol: Protocol) -> None:
             f"at most {LARGEST_GAS_SHARE:g} of it, that is {most:.3g} / m^3",
             "bubbles.number_density",
         )
+
+
+def _check_mechanism(protocol: Protocol) -> None:
+    mechanism, mixture = protocol.model.mechanism, protocol.gas.mixture
+    if mechanism == "h2o_o2" and "N2" in mixture:
+        raise RefusalError(
+            "this mechanism holds no nitrogen, the gas does", '"auto" or "h2o_o2_n2"', MECHANISM
+        )
+    if mechanism == AUTO or mechanism in SHIPPED:
+        return
+    from sonoyield.describe.gas import phase_for  # Cantera: only where a file is to be read
+
+    try:
+        phase_for(mechanism, mixture)
+    except RefusalError as error:
+        raise RefusalError(error.problem, error.allowed, MECHANISM) from None
 
 
 def _time(seconds: float) -> str:

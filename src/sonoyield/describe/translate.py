@@ -9,7 +9,7 @@ from pydantic import BaseModel, BeforeValidator, ValidationError
 from pydantic.fields import FieldInfo
 
 from sonoyield.describe.errors import MISSING, ProtocolError, RefusalError
-from sonoyield.describe.fields import later_species, nearest
+from sonoyield.describe.fields import nearest
 from sonoyield.describe.later import LATER_KEYS
 
 # A misspelt key also leaves its right name missing: name the misspelling.
@@ -53,8 +53,6 @@ def _unknown_key(
     home = _model_at(root, path[:-1]) or root
     names = tuple(home.model_fields)
     sentence = LATER_KEYS.get(key, "")
-    if path[:-1] == ("model", "accommodation"):
-        sentence = later_species(path[-1])
     if sentence:
         return ProtocolError(file, key, value, sentence, ", ".join(names))
     near = _nearest_key(root, path, names)

@@ -13,9 +13,11 @@ from sonoyield._version import __version__
 from sonoyield.collapse.bubble import Bubble
 from sonoyield.collapse.follow import PATIENCE, Accuracy, follow
 from sonoyield.collapse.history import History
+from sonoyield.collapse.ionisation import THRESHOLD, IonisationEstimate, ionisation_of
 from sonoyield.collapse.ledger import Balance, Energies, balance, energies
 from sonoyield.collapse.one_way import follow_one_way
-from sonoyield.collapse.outcome import Code, Outcome, beyond_thermo, outcome_of
+from sonoyield.collapse.outcome import Code, Outcome, outcome_of
+from sonoyield.collapse.thermo_range import ThermoRange, thermo_range
 from sonoyield.collapse.thresholds import mechanical_index
 from sonoyield.collapse.yields import (
     OXIDANT_FORMULA,
@@ -35,7 +37,7 @@ from sonoyield.expose.schedule import Driving, driving, pulse_warning
 SCHEMA = 1
 LIBRARIES = ("cantera", "numba", "numpy", "pydantic", "pint")
 COLD_GAS = 200.0  # K, where the thermo polynomials end below
-NUMBERS = ("collapse", "counts", "energy", "driven", "doses", "oxidant")
+NUMBERS = ("collapse", "counts", "energy", "driven", "doses", "oxidant", "ionisation")
 FAST_WALL = 0.5  # of the sound speed: Keller-Miksis begins to err
 
 
@@ -43,9 +45,10 @@ FAST_WALL = 0.5  # of the sound speed: Keller-Miksis begins to err
 class Estimate:
     """Everything known about one exposure.
 
-    ``collapse``, ``counts``, ``energy``, ``doses`` and ``oxidant`` are ``None`` when the numerics
-    failed (``outcome.code.has_numbers`` is false). ``counts`` in molecules per collapse, by
-    species. ``history`` holds the run itself, ``accuracy`` what was asked of it.
+    ``collapse``, ``counts``, ``energy``, ``doses``, ``oxidant`` and ``ionisation`` are ``None``
+    when the numerics failed (``outcome.code.has_numbers`` is false), and ``thermo_range`` empty.
+    ``counts`` in molecules per collapse, by species. ``history`` holds the run itself,
+    ``accuracy`` what was asked of it.
     """
 
     protocol: Protocol
@@ -62,6 +65,8 @@ class Estimate:
     oxidant: Dose | None
     mechanical_index: float | None
     accuracy: Accuracy
+    thermo_range: tuple[ThermoRange, ...]
+    ionisation: IonisationEstimate | None
     coupling_difference: dict[str, Any] | None = None
 
     def as_dict(self) -> dict[str, Any]:
@@ -73,7 +78,7 @@ def estimate(protocol: Protocol, both: bool = False, accuracy: Accuracy | None =
     """Drive the protocol's bubble through its collapses and count what it makes.
 
     With ``both`` the other coupling is run too and its difference reported. Raises
-    ``FileNotFoundError`` when the mechanism is not installed.
+    ``FileNotFoundError`` when a shipped mechanism is not installed.
     """
     accuracy = accuracy or Accuracy()
     liquid = liquid_of(protocol)
@@ -96,10 +101,11 @@ def liquid_of(protocol: Protocol) -> LiquidState:
 def bubble_of(protocol: Protocol, liquid: LiquidState) -> Bubble:
     """The protocol's bubble at rest."""
     model = protocol.model
+    phase = phase_for(model.mechanism, protocol.gas.mixture)
     shares = {"water": model.accommodation.of("H2O")}
-    shares |= {name: model.accommodation.of(name) for name in ABSORBED}
+    shares |= {k: model.accommodation.of(k) for k in ABSORBED if k in phase.species}
     return Bubble(
-        phase=phase_for("h2o_o2", protocol.gas.mixture),
+        phase=phase,
         liquid=liquid,
         ambient_pressure=protocol.liquid.ambient_pressure,
         frequency=protocol.drive.frequency,
@@ -136,7 +142,7 @@ def _estimate(
     }
     if not outcome.code.has_numbers:
         none: dict[str, Any] = dict.fromkeys(NUMBERS)
-        return Estimate(**common, **none, warnings=())
+        return Estimate(**common, **none, warnings=(), thermo_range=())
     counts = counts_of(history)
     energy = _mean_energies(history)
     driven = driving(protocol.schedule, drive.frequency, windows_per_period(history))
@@ -155,6 +161,8 @@ def _estimate(
         energy=energy,
         driven=driven,
         oxidant=doses.pop("oxidant"),
+        thermo_range=tuple(thermo_range(history)),
+        ionisation=ionisation_of(history),
         doses=doses,
     )
 
@@ -167,18 +175,20 @@ def _mean_energies(history: History) -> Energies:
 def _warnings(
     protocol: Protocol, liquid: LiquidState, history: History, collapse: Collapse, outcome: Outcome
 ) -> list[str]:
-    found = []
+    found = list(history.bubble.phase.notes)
     if history.stopped:
         found.append(
             f"{len(history.windows)} of {protocol.model.collapses} windows completed: no further "
             f"main expansion came within {PATIENCE} periods. Yields are means over complete "
             "windows, or cover the whole run where there is none."
         )
-    for one in beyond_thermo(history):
+    for one in filter(lambda each: each.matters, thermo_range(history)):
         found.append(
             f"{one.species} is above the {one.limit_K:.0f} K of its thermo source for "
-            f"{one.time_s:.2g} s, at up to {100 * one.largest_fraction:.2g} % of the gas."
+            f"{one.time_s:.2g} s, at up to {100 * one.largest_share:.2g} % of the gas."
         )
+    if (ions := ionisation_of(history)).matters:
+        found.append(_ionisation_warning(ions))
     mach = collapse.peak_wall_speed_m_s / liquid.sound_speed
     if outcome.code is not Code.OUT_OF_RANGE and mach > FAST_WALL:
         found.append(f"The wall reaches Mach {mach:.2f} in the liquid: the radial equation errs.")
@@ -190,6 +200,15 @@ def _warnings(
         )
     pulses = pulse_warning(protocol.schedule, protocol.drive.frequency)
     return [*found, pulses] if pulses else found
+
+
+def _ionisation_warning(ions: IonisationEstimate) -> str:
+    return (
+        f"Ionisation is not modelled. From {ions.onset_temperature_K:.0f} K on more than "
+        f"{100 * THRESHOLD:.0f} % of this gas would be ionised (Saha estimate), and "
+        f"{100 * ions.ionised_share:.2g} % at the {ions.peak_temperature_K:.0f} K reached: the "
+        "true peak is cooler."
+    )
 
 
 def _with_difference(result: Estimate, second: Estimate, other: str) -> Estimate:
@@ -238,6 +257,8 @@ def _as_dict(result: Estimate) -> dict[str, Any]:
             "formula": OXIDANT_FORMULA,
         },
         "mechanical_index": result.mechanical_index,
+        "thermo_range": [asdict(one) for one in result.thermo_range],
+        "ionisation": plain(result.ionisation),
         "provenance": _provenance(result),
     }
     if result.coupling_difference is not None:

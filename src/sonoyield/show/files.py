@@ -40,6 +40,17 @@ def write_result(table: dict[str, Any], path: Path) -> None:
         _write(path, lambda target: pd.DataFrame([flat(table)]).to_parquet(target, index=False))
 
 
+def write_rows(rows: list[dict[str, Any]], path: Path) -> None:
+    """Write rows of equal keys as CSV or Parquet, by the path's suffix."""
+    import pandas as pd
+
+    frame = pd.DataFrame(rows)
+    if path.suffix == ".csv":
+        _write(path, lambda target: frame.to_csv(target, index=False))
+    else:
+        _write(path, lambda target: frame.to_parquet(target, index=False))
+
+
 def write_history(history: History, path: Path) -> None:
     """Write R, U, T, p and composition against time as CSV or Parquet, by the path's suffix.
 

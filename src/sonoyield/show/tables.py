@@ -11,8 +11,10 @@ from rich.table import Table
 
 from sonoyield.collapse.yields import OXIDANT_FORMULA
 from sonoyield.describe.errors import one_line
+from sonoyield.describe.gas import ABSORBED, SPARINGLY_SOLUBLE
 
 if TYPE_CHECKING:
+    from sonoyield.collapse.bubble import Bubble
     from sonoyield.describe.protocol import Liquid
     from sonoyield.expose.estimate import Estimate
 
@@ -65,9 +67,9 @@ def _table(title: str, *columns: str) -> Table:
 def _assumed(result: Estimate) -> Table:
     protocol, liquid, bubble = result.protocol, result.liquid, result.history.bubble
     model = protocol.model
-    mixture = ", ".join(f"{100 * share:.4g} % {name}" for name, share in bubble.mixture.items())
+    parts = sorted(bubble.mixture.items(), key=lambda part: -part[1])
+    mixture = ", ".join(f"{100 * share:.4g} % {name}" for name, share in parts)
     pulse = protocol.schedule.pulse
-    shares = ", ".join(f"{name} {value:g}" for name, value in bubble.accommodation.items())
     table = _table("Assumed", "what")
     table.add_column("value", justify="left")
     for what, value in (
@@ -85,11 +87,10 @@ def _assumed(result: Estimate) -> Table:
         ("motion", "Keller-Miksis, spherical"),
         ("gas", "well mixed, one temperature; Noble-Abel" if model.excluded_volume
                 else "well mixed, one temperature; ideal"),
-        ("chemistry", f"{bubble.phase.name}, {len(bubble.phase.species)} species, "
-                      f"{model.coupling} coupling"),
-        ("uptake by the liquid", "radicals and O3 held at zero at the wall (upper bound for H, O, "
-                                 "O3)" if model.uptake else "none"),
-        ("accommodation", shares),
+        ("chemistry", f"{bubble.phase.name} (SHA-256 {bubble.phase.sha256[:12]}), "
+                      f"{len(bubble.phase.species)} species, {model.coupling} coupling"),
+        ("uptake by the liquid", _uptake(bubble) if model.uptake else "none"),
+        ("accommodation", _accommodation(bubble)),
     ):  # fmt: skip
         table.add_row(what, value)
     return table
@@ -99,6 +100,22 @@ def _liquid(liquid: Liquid) -> str:
     if liquid.kind == "saline":
         return f"saline of {liquid.salinity:.4g} g/L"
     return liquid.kind
+
+
+def _uptake(bubble: Bubble) -> str:
+    held = [name for name in ABSORBED if name in bubble.phase.species]
+    bound = ", ".join(name for name in held if name in SPARINGLY_SOLUBLE)
+    return f"{', '.join(held)} held at zero at the wall (an upper bound for {bound})"
+
+
+def _accommodation(bubble: Bubble) -> str:
+    """Values by species, those that share one together."""
+    names: dict[float, list[str]] = {}
+    for name, value in bubble.accommodation.items():
+        names.setdefault(value, []).append(name)
+    if len(names) == 1:
+        return f"{next(iter(names)):g} for water and all that is taken up"
+    return "; ".join(f"{value:g} for {', '.join(of)}" for value, of in names.items())
 
 
 def _collapse(result: Estimate) -> Table:
@@ -170,8 +187,8 @@ def _closure(result: Estimate) -> str:
     balance = result.balance
     return (
         f"Energy closed to {balance.energy_error:.1e} of the work, elements to "
-        f"{balance.element_error:.1e}. Zero of enthalpy: liquid water, O2 and noble gases at the "
-        "liquid's temperature."
+        f"{balance.element_error:.1e}. Zero of enthalpy: liquid water, O2, N2 and noble gases at "
+        "the liquid's temperature."
     )
 
 
