@@ -24,6 +24,7 @@ Array = NDArray[np.float64]
 GAS_CONSTANT = ct.gas_constant / 1e3
 AVOGADRO = ct.avogadro / 1e3
 RADICALS = ("OH", "H", "O", "HO2", "H2O2", "O3")
+RADICALS += ("N", "NH", "NH2", "NH3", "NNH", "NO", "NO2", "NO3", "N2O", "HNO", "HONO", "HONO2")
 ENERGIES = ("work", "viscous", "radiation", "heat", "carried")
 STEAM = (2.443221e-3, 1.323095e-2, 6.770357e-3, -3.454586e-3, 4.096266e-4)
 COLDEST = 200.0  # K, below it c_p is held

@@ -9,10 +9,12 @@ import pytest
 
 from sonoyield import Estimate, Protocol, estimate
 from sonoyield.collapse.outcome import Code
+from sonoyield.decide.explain import explain
 
 ROOT = Path(__file__).resolve().parents[1]
 README = (ROOT / "README.md").read_text(encoding="utf-8")
 EXAMPLE = ROOT / "examples" / "bench_355kHz_argon.toml"
+AIR = ROOT / "examples" / "bench_355kHz_air.toml"
 
 
 @pytest.fixture(scope="module")
@@ -48,3 +50,38 @@ def test_printed_counts_are_those_of_a_run(result: Estimate) -> None:
 def test_keys_and_codes_are_explained(result: Estimate) -> None:
     assert all(f"`{key}`" in README for key in result.as_dict())
     assert all(f"| `{code}` |" in README for code in Code)
+
+
+def test_argon_beside_air(result: Estimate) -> None:
+    """To the digits printed; NO has two, since its count is near the integrator's floor."""
+    air = estimate(Protocol.load(AIR))
+    assert result.collapse is not None and air.collapse is not None
+    assert result.counts is not None and air.counts is not None
+    peaks = [one.collapse.peak_temperature_K for one in (result, air) if one.collapse]
+    assert side_by_side("peak temperature, K") == pytest.approx(peaks, abs=0.6)
+    for name in ("OH", "H2O2"):
+        counts = [result.counts[name].delivered, air.counts[name].delivered]
+        assert side_by_side(f"{name} delivered") == pytest.approx(counts, rel=6e-3), name
+    oxides = sum(air.counts[name].delivered for name in ("NO", "NO2", "HONO"))
+    assert "NO" not in result.counts
+    (printed,) = re.findall(r"^\| NO \+ NO2 \+ HONO delivered \| none \| (\S+) \|$", README, re.M)
+    assert float(printed) == pytest.approx(oxides, rel=0.04)
+
+
+def side_by_side(label: str) -> list[float]:
+    (row,) = re.findall(rf"^\| {re.escape(label)} \| (\S+) \| (\S+) \|$", README, re.MULTILINE)
+    return [float(cell) for cell in row]
+
+
+def test_printed_explanation_is_that_of_a_run() -> None:
+    """Net production and sensitivity of the printed rows, to the digits printed."""
+    (story,) = explain(Protocol.load(EXAMPLE), ("OH",)).stories
+    excerpt = README.split("OH: made (+)", 1)[1].split("```", 1)[0]
+    made, influence = excerpt.split("OH delivered: sensitivity", 1)
+    for one in story.productions[:4]:
+        (net,) = re.findall(rf"^ {re.escape(one.rate.reaction_id)} .* (\S+)$", made, re.MULTILINE)
+        assert float(net) == pytest.approx(one.net, rel=6e-3), one.rate.reaction_id
+    for row in story.influences[:4]:
+        label = re.escape(row.rate.reaction_id)
+        (slope,) = re.findall(rf"^ {label} .* (\S+) +\S+ +\S+ %$", influence, re.MULTILINE)
+        assert float(slope) == pytest.approx(row.sensitivity, abs=2e-3), row.rate.reaction_id

@@ -30,6 +30,7 @@ from sonoyield.collapse.follow import follow  # noqa: E402
 from sonoyield.collapse.history import History  # noqa: E402
 from sonoyield.collapse.ledger import balance  # noqa: E402
 from sonoyield.describe.gas import AVOGADRO, load_phase, phase_for  # noqa: E402
+from sonoyield.describe.gases import COMPOSITIONS  # noqa: E402
 from sonoyield.describe.liquid import water  # noqa: E402
 
 IMPORT_SECONDS = time.perf_counter() - BEFORE_IMPORT
@@ -39,11 +40,12 @@ import second_opinion  # noqa: E402
 
 ATMOSPHERE = 101325.0
 WATER_MOLAR_MASS = 18.015268e-3  # kg/mol, IAPWS R6-95
-# name: frequency Hz, pressure amplitude Pa, radius m; argon in water at 25 degC
+# name: frequency Hz, pressure amplitude Pa, radius m, gas; in water at 25 degC
 CASES = {
-    "argon 355 kHz 2 bar 3 um": (355e3, 2.0e5, 3.0e-6),
-    "argon 20 kHz 1.5 bar 4.5 um": (20e3, 1.5e5, 4.5e-6),
-    "argon 1 MHz 4 bar 1.5 um": (1e6, 4.0e5, 1.5e-6),
+    "argon 355 kHz 2 bar 3 um": (355e3, 2.0e5, 3.0e-6, "argon"),
+    "argon 20 kHz 1.5 bar 4.5 um": (20e3, 1.5e5, 4.5e-6, "argon"),
+    "argon 1 MHz 4 bar 1.5 um": (1e6, 4.0e5, 1.5e-6, "argon"),
+    "air 355 kHz 2 bar 3 um": (355e3, 2.0e5, 3.0e-6, "air"),
 }
 BARE_CALLS = 2000
 
@@ -159,17 +161,17 @@ def measure(name: str, runs: int) -> Row:
 
 def bubble(name: str) -> Bubble:
     """The product's bubble of a case: uptake on, accommodation 0.4, the defaults otherwise."""
-    frequency, amplitude, radius = CASES[name]
-    gas = {"AR": 1.0}
+    frequency, amplitude, radius, called = CASES[name]
+    gas = COMPOSITIONS[called]
     return Bubble(
-        phase_for("h2o_o2", gas), water(298.15), ATMOSPHERE, frequency, amplitude, radius, gas,
+        phase_for("auto", gas), water(298.15), ATMOSPHERE, frequency, amplitude, radius, gas,
         {"water": 0.4, "radicals": 0.4},
     )  # fmt: skip
 
 
 def as_case(one: Bubble, phase: str) -> second_opinion.Case:
     """The same bubble for the baseline, on the phase of that name."""
-    liquid, whole = one.liquid, load_phase("h2o_o2")
+    liquid, whole = one.liquid, load_phase(one.phase.name)
     return second_opinion.Case(
         frequency=one.frequency,
         pressure=one.pressure_amplitude,

@@ -17,8 +17,8 @@ from sonoyield.collapse.outcome import Code
 from sonoyield.describe.liquid import liquid_state
 
 ATMOSPHERE = 101325.0  # Pa
-SPECIES = ("AR", "HE", "KR", "XE", "O2")
-NAMES = ("argon", "helium", "krypton", "xenon", "oxygen")
+SPECIES = ("AR", "HE", "KR", "XE", "O2", "N2", "H2")
+NAMES = ("argon", "helium", "krypton", "xenon", "oxygen", "nitrogen", "hydrogen", "air")
 ACCOMMODATION = ("water", "radicals", "OH", "H", "O", "HO2", "H2O2", "O3")
 MOST_GAS = 0.0999  # of the liquid's volume; 0.1 is the limit
 LEAST_SHARE_WITH_NUMBERS = 0.75  # the rest take the step limit or leave the ledger open
@@ -165,9 +165,9 @@ FAULTS: dict[str, Fault] = {
     "drive.second": lambda data: data["drive"].update(second={"frequency": "710 kHz"}),
     "bubble": lambda data: data.update(bubble=data["bubbles"]),
     "bubbles.radius": lambda data: data["bubbles"].update(radius="3 mm"),
-    "bubbles.number_density": lambda data: data["bubbles"].update(number_density="1e18 / m^3"),
-    "gas.mixture": lambda data: data["gas"].update(mixture="air"),
-    "gas.mixture.N2": lambda data: data["gas"].update(mixture={"AR": 0.5, "N2": 0.5}),
+    "bubbles.number_density": lambda data: data["bubbles"].update(number_density="1e19 / m^3"),
+    "gas.mixture": lambda data: data["gas"].update(mixture="ozone"),
+    "gas.mixture.CO2": lambda data: data["gas"].update(mixture={"AR": 0.5, "CO2": 0.5}),
     "liquid.temperature": lambda data: data["liquid"].update(temperature="25"),
     "liquid.ambient_pressure": lambda data: data["liquid"].update(ambient_pressure="11 atm"),
     "liquid.volume": lambda data: data["liquid"].pop("volume"),

@@ -14,7 +14,7 @@ from math import exp, log, sqrt
 from typing import Any
 
 from sonoyield._version import __version__
-from sonoyield.collapse.follow import follow
+from sonoyield.collapse.follow import Accuracy, follow
 from sonoyield.collapse.history import History
 from sonoyield.collapse.ledger import balance
 from sonoyield.collapse.one_way import follow_one_way
@@ -33,6 +33,8 @@ from sonoyield.expose.estimate import SCHEMA, Estimate, estimate
 SCREENED = 15  # rates whose sensitivity is taken
 # Step in ln k. Small enough for a derivative (the error is of its square), large enough to stand
 # well above the integrator's tolerance of 1e-6.
+# Close steps, and no stage with chemistry frozen, so that rates sum to what the run did.
+FINE = Accuracy(relative=1e-7, split=False)
 STEP = 0.15
 LOOSE = 0.01  # of the integrals, above which they are called inexact
 FEWEST = 1.0  # delivered molecules below which a relative change means nothing
@@ -107,7 +109,7 @@ def explain(protocol: Protocol, species: tuple[str, ...] = ("OH", "H2O2")) -> Ex
     Raises ``SpeciesError`` for a species that the result does not report, ``FileNotFoundError``
     when the mechanism is not installed.
     """
-    result = estimate(protocol)
+    result = estimate(protocol, accuracy=FINE)
     _check(species, result)
     if not result.outcome.code.has_numbers:
         return Explanation(result, ())

@@ -75,7 +75,8 @@ def history_frame(history: History) -> pd.DataFrame:
         "temperature_K": history.temperature,
         "pressure_Pa": history.pressure,
     }
-    columns |= {f"{name}_gas_mol": history.moles[:, k] for k, name in enumerate(names)}
+    inside = history.moles.clip(min=0.0)  # the tolerance may leave a little below zero
+    columns |= {f"{name}_gas_mol": inside[:, k] for k, name in enumerate(names)}
     columns |= {
         f"{names[k]}_crossed_mol": history.crossed[:, k] for k in history.bubble.crossing
     }

@@ -85,8 +85,8 @@ def _assumed(result: Estimate) -> Table:
                            if model.vapour else f"{bubble.radius * 1e6:.4g} um, {mixture}, dry"),
         ("bubbles", f"{protocol.bubbles.number_density:.4g} per m3, all alike, uniform field"),
         ("motion", "Keller-Miksis, spherical"),
-        ("gas", "well mixed, one temperature; Noble-Abel" if model.excluded_volume
-                else "well mixed, one temperature; ideal"),
+        ("gas", "well mixed, one temperature (a gentle swing comes out 2 to 18 % too stiff); " + (
+            "Noble-Abel, which also shifts the equilibria" if model.excluded_volume else "ideal")),
         ("chemistry", f"{bubble.phase.name} (SHA-256 {bubble.phase.sha256[:12]}), "
                       f"{len(bubble.phase.species)} species, {model.coupling} coupling"),
         ("uptake by the liquid", _uptake(bubble) if model.uptake else "none"),
