@@ -161,7 +161,8 @@ class _Bubble:
         self.dense = case.dense_equilibrium and bool(self.covolume.any())
         net = self.gas.product_stoich_coeffs - self.gas.reactant_stoich_coeffs
         self.net = np.ascontiguousarray(net)
-        self.joins = net.sum(axis=0) < 0.0
+        made = net.sum(axis=0)
+        self.ahead = np.where(made < 0.0, 1.0, np.where(made > 0.0, 0.0, 0.5))
         self._set_wall()
         self._set_transport()
         contents = self._contents()
@@ -267,14 +268,12 @@ class _Bubble:
     def _dense_production(self, volume: float, free: float, amount: float) -> Array:
         """Production (mol/s) with activities c_k V/(V-B) exp(b_k p/RT), the gas being set.
 
-        The whole factor falls on the direction that joins particles, else on the reverse one.
+        The factor falls on the direction that joins particles, else on both evenly.
         """
         activity = math.log(volume / free) + self.covolume * (amount / free)
-        shift = np.exp(np.where(self.joins, -1.0, 1.0) * (activity @ self.net))
-        forward = self.gas.forward_rates_of_progress
-        reverse = self.gas.reverse_rates_of_progress
-        forward[self.joins] *= shift[self.joins]
-        reverse[~self.joins] *= shift[~self.joins]
+        shift = activity @ self.net
+        forward = self.gas.forward_rates_of_progress * np.exp(-self.ahead * shift)
+        reverse = self.gas.reverse_rates_of_progress * np.exp((1.0 - self.ahead) * shift)
         return np.asarray(self.net @ (forward - reverse)) * (1e3 * volume)
 
     def slopes(self, t: float, y: Array) -> Array:

@@ -29,6 +29,7 @@ from sonoyield.collapse.compiled import is_cached  # noqa: E402
 from sonoyield.collapse.follow import follow  # noqa: E402
 from sonoyield.collapse.history import History  # noqa: E402
 from sonoyield.collapse.ledger import balance  # noqa: E402
+from sonoyield.collapse.reactor import HotStage  # noqa: E402
 from sonoyield.describe.gas import AVOGADRO, load_phase, phase_for  # noqa: E402
 from sonoyield.describe.gases import COMPOSITIONS  # noqa: E402
 from sonoyield.describe.liquid import water  # noqa: E402
@@ -57,7 +58,8 @@ class Row:
     ``ratio``: baseline over product. ``ratio_lean``: the same with the baseline, too, on the phase
     without the absent noble gases. ``bare_us``: one state set and one call for the rates as the
     baseline makes them, ``bare_state_us`` with ``gas.state = ...``. ``over_bare``: the product's
-    time over its evaluations times ``bare_us``; ``over_bare_state`` likewise.
+    time over its evaluations times ``bare_us``; ``over_bare_state`` likewise;
+    ``reactor_over_bare`` counts only the time inside the reactor network's steps.
     """
 
     case: str
@@ -76,6 +78,7 @@ class Row:
     bare_state_us: float
     over_bare: float
     over_bare_state: float
+    reactor_over_bare: float
     product_energy_error: float
     baseline_energy_error: float
     product_temperature: float
@@ -120,7 +123,7 @@ def measure(name: str, runs: int) -> Row:
     end = float(history.times[history.marks[-1]])
     whole, lean = as_case(one, "gas"), as_case(one, one.phase.phase)
     second_opinion.run(whole, end)
-    product, baseline, leaner, bare, bare_state = [], [], [], [], []
+    product, baseline, leaner, bare, bare_state, reactor = [], [], [], [], [], []
     for _ in range(runs):
         product.append(timed(lambda: follow(one))[0])
         found = second_opinion.run(whole, end)
@@ -128,6 +131,7 @@ def measure(name: str, runs: int) -> Row:
         product.append(timed(lambda: follow(one))[0])
         found_lean = second_opinion.run(lean, end)
         leaner.append(found_lean.wall_seconds)
+        reactor.append(reactor_seconds(one))
         bare.append(bare_cost(history, as_baseline))
         bare_state.append(bare_cost(history, as_state))
     mine, theirs = counted(history), found
@@ -150,6 +154,7 @@ def measure(name: str, runs: int) -> Row:
         bare_state_us=1e6 * median(bare_state),
         over_bare=seconds / (mine * median(bare)),
         over_bare_state=seconds / (mine * median(bare_state)),
+        reactor_over_bare=median(reactor) / (mine * median(bare)),
         product_energy_error=balance(history).energy_error,
         baseline_energy_error=theirs.energy_error,
         product_temperature=float(history.temperature.max()),
@@ -200,6 +205,25 @@ def timed(work: Callable[[], object]) -> tuple[float, object]:
     before = time.perf_counter()
     result = work()
     return time.perf_counter() - before, result
+
+
+def reactor_seconds(one: Bubble) -> float:
+    """Seconds that a run of the product spends in the reactor network's steps."""
+    spent = 0.0
+    step = HotStage.step
+
+    def timed_step(stage: HotStage) -> None:
+        nonlocal spent
+        before = time.perf_counter()
+        step(stage)
+        spent += time.perf_counter() - before
+
+    HotStage.step = timed_step
+    try:
+        follow(one)
+    finally:
+        HotStage.step = step
+    return spent
 
 
 def bare_cost(history: History, setter: Callable[[ct.Solution, History], list]) -> float:
@@ -286,6 +310,7 @@ LINES: dict[str, Callable[[Row], str]] = {
     "product / (evaluations x bare) (state)": lambda r: (
         f"{r.over_bare:.2f} ({r.over_bare_state:.2f})"
     ),
+    "its reactor steps alone / (evaluations x bare)": lambda r: f"{r.reactor_over_bare:.2f}",
     "energy error, product": lambda r: f"{r.product_energy_error:.1e}",
     "energy error, baseline": lambda r: f"{r.baseline_energy_error:.1e}",
     "peak temperature, product / baseline": lambda r: (

@@ -5,17 +5,20 @@ V / (V - B) exp(b_k p / R T), B the sum of all covolumes, so that equilibrium sh
 reactions that make particles (Toegel, Hilgenfeldt, Lohse 2002, Phys. Rev. Lett. 88, 034301). Rates
 are Cantera's at the true density; where a reaction changes the number of particles, the direction
 that joins them takes the whole factor (the transition state is taken as large as the joined
-molecule, so that splitting keeps its measured rate), else the reverse one does.
+molecule, so that splitting keeps its measured rate); else both directions share it evenly, so that
+nothing depends on how a reaction is written.
 """
 
 from __future__ import annotations
 
-from math import exp, log
+from math import exp, log, pi
 from typing import TYPE_CHECKING
 
 import numpy as np
 from numba import njit
 
+from sonoyield.collapse.equations import MOLES, RADIUS
+from sonoyield.collapse.exchange import COVOLUME
 from sonoyield.describe.gas import Array
 
 if TYPE_CHECKING:
@@ -44,11 +47,9 @@ def dense_factors(gas: ct.Solution, covolume: Array, volumes: Array, moles: Arra
     free = volumes - moles @ covolume
     crowding = np.log(volumes / free)[:, None] + np.outer(moles.sum(axis=1) / free, covolume)
     shift = crowding @ net
-    joins = net.sum(axis=0) < -0.5
-    factors = np.ones((len(volumes), 2, net.shape[1]))
-    factors[:, 0] = np.where(joins, np.exp(-shift), 1.0)
-    factors[:, 1] = np.where(joins, 1.0, np.exp(shift))
-    return factors
+    made = net.sum(axis=0)
+    share = np.where(made < -0.5, 1.0, np.where(made > 0.5, 0.0, 0.5))
+    return np.stack([np.exp(-share * shift), np.exp((1.0 - share) * shift)], axis=1)
 
 
 @njit(cache=True, error_model="numpy")
@@ -86,9 +87,21 @@ def dense_production(
             made += coefficients[e]
         if made < -0.5:
             net = forward[r] * exp(-shift) - reverse[r]
-        else:
+        elif made > 0.5:
             net = forward[r] - reverse[r] * exp(shift)
+        else:
+            half = exp(0.5 * shift)
+            net = forward[r] / half - reverse[r] * half
         net *= KILO * volume
         for e in range(start, ends[r]):
             production[members[e]] += coefficients[e] * net
         start = ends[r]
+
+
+@njit(cache=True, error_model="numpy")
+def crowding(state: Array, species: Array) -> float:
+    """Share of the bubble's volume that the covolumes of its contents take."""
+    taken = 0.0
+    for k in range(species.shape[0]):
+        taken += state[MOLES + k] * species[k, COVOLUME]
+    return taken / (4.0 / 3.0 * pi * state[RADIUS] ** 3)

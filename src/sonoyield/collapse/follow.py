@@ -22,14 +22,16 @@ from sonoyield.describe.gas import ABSORBED, Array
 
 # Above these temperatures the reactor takes over. What would react in fresh gas on the way to
 # 2300 K changes delivered OH by under 0.02 % (measured, nine strong collapses); it matters to one
-# that ends below WEAK, which is then run again. Hydrogen and the remains of radicals left by an
+# that ends below WEAK: where a quick look ahead with chemistry frozen stays below WEAK_AHEAD, or a
+# run turns out so, the reactor begins early. Hydrogen and the remains of radicals left by an
 # earlier collapse may react sooner.
-WARM_FRESH, WARM_USED, WEAK = 2300.0, 1000.0, 3000.0  # K
+WARM_FRESH, WARM_USED, WEAK, WEAK_AHEAD = 2300.0, 1000.0, 3000.0, 3400.0  # K
 # The reactor lets go of colder gas when the radicals left in it are at most this share of those
 # delivered so far (which bounds what freezing them can change), or of the contents.
 QUIET_DELIVERED, QUIET_CONTENTS = 1e-4, 1e-9
 PATIENCE = 2.5  # periods without a main maximum before the run ends
 COLD_SHARE = 0.1  # of the tolerance asked for: it costs little there and closes the ledger
+WEAK_SHARE = 0.5  # likewise where the reactor carries the compression from WARM_USED on
 COLD_STEPS = 20_000  # accepted steps of the explicit stage before it counts as stiff
 
 
@@ -58,8 +60,9 @@ def follow(bubble: Bubble, collapses: int = 1, accuracy: Accuracy | None = None)
     if bubble.pressure_amplitude == 0.0:
         return _at_rest(bubble)
     warm = WARM_USED if bubble.mixture.get("H2") else WARM_FRESH
-    history = _Run(bubble, collapses, accuracy, warm).complete()
-    if warm != WARM_USED and WARM_USED < history.temperature.max() < WEAK:
+    run = _Run(bubble, collapses, accuracy, warm)
+    history = run.complete()
+    if not run.early and WARM_USED < history.temperature.max() < WEAK:
         warm = WARM_USED
         history = _Run(bubble, collapses, accuracy, warm).complete()
     for _ in range(accuracy.tighten):
@@ -95,6 +98,7 @@ class _Run:
         species = bubble.phase.species
         self.radicals = eq.MOLES + np.array([species.index(k) for k in ABSORBED if k in species])
         self.warm = warm
+        self.early = warm < WARM_FRESH
         self.few = QUIET_CONTENTS * float(bubble.moles.sum())
 
     def complete(self) -> History:
@@ -136,6 +140,7 @@ class _Run:
 
     def _hot(self) -> str:
         hot, before, deadline = self.hot, dict(self.counters), self.deadline
+        hot.relative = self.accuracy.relative * (WEAK_SHARE if self.early else 1.0)
         hot.begin(self.time, self.state)
         self.warm = WARM_USED
         stopped = ""
@@ -190,6 +195,10 @@ class _Run:
         ends = len(self.marks) + 1 == self.wanted
         if not larger and not (ends and self._outgrown(time, state)):
             self.marks.append(row)
+            if len(self.marks) == 2 and self.warm == WARM_FRESH:
+                _, hottest = self._ahead(time, state)
+                self.early = hottest <= WEAK_AHEAD
+                self.warm = WARM_USED if self.early else WARM_FRESH
 
     def _drop_outgrown_mark(self, half: float) -> None:
         """Unmark the last maximum where the radius has grown larger within half a period."""
@@ -201,11 +210,17 @@ class _Run:
             self.marks.pop()
 
     def _outgrown(self, time: float, state: Array) -> bool:
-        """Whether the radius grows larger within half a period, by a quick frozen look ahead."""
-        radius, stop = state[eq.RADIUS], time + 0.5 * self.bubble.period
+        """Whether the radius grows larger within half a period."""
+        largest, _ = self._ahead(time, state)
+        return largest > state[eq.RADIUS] * (1.0 + LOOK_AHEAD)
+
+    def _ahead(self, time: float, state: Array) -> tuple[float, float]:
+        """Largest radius and temperature in the next half period, by a quick frozen look ahead."""
+        stop = time + 0.5 * self.bubble.period
         ahead = state.copy()
         step = 1e-4 * self.bubble.period
         times, states = _scratch(len(state))
+        largest = hottest = 0.0
         why = cold.MAXIMUM
         while why == cold.MAXIMUM and time < stop:
             why, taken, step = cold.integrate_frozen(
@@ -213,11 +228,11 @@ class _Run:
                 self.absolute * (LOOK_AHEAD / self.relative), *self.bubble.tables, times, states,
             )  # fmt: skip
             if taken == 0:
-                return False
+                break
             time = float(times[taken - 1])
-            if states[:taken, eq.RADIUS].max() > radius * (1.0 + LOOK_AHEAD):
-                return True
-        return False
+            largest = max(largest, float(states[:taken, eq.RADIUS].max()))
+            hottest = max(hottest, float(states[:taken, eq.TEMPERATURE].max()))
+        return largest, hottest
 
 
 NO_MAXIMUM = "no_maximum"

@@ -18,7 +18,7 @@ from numba import njit
 
 from sonoyield.collapse import equations as eq
 from sonoyield.collapse.bubble import CONTENTS_FLOOR, Bubble
-from sonoyield.collapse.dense import dense_production, net_stoichiometry
+from sonoyield.collapse.dense import crowding, dense_production, net_stoichiometry
 from sonoyield.collapse.exchange import COVOLUME
 from sonoyield.describe.gas import Array
 
@@ -27,6 +27,7 @@ os.environ.setdefault("SUNLOGGER_WARNING_FILENAME", os.devnull)
 
 IntegrationError = ct.CanteraError
 
+THIN = 1e-4  # share of the volume that covolumes take; below it they do not shift equilibria
 KILO = 1e3  # mol in a kmol, Cantera's unit
 OWN = 2  # temperature and volume stand before the amounts in the reactor's state
 
@@ -34,12 +35,13 @@ OWN = 2  # temperature and volume stand before the amounts in the reactor's stat
 class HotStage:
     """Steps the coupled bubble with Cantera's CVODES integrator from a given state.
 
-    ``time`` (s) and ``state`` (laid out as in ``equations``) are those of the last step.
+    ``time`` (s) and ``state`` (laid out as in ``equations``) are those of the last step;
+    ``relative`` is the tolerance of the next ``begin``.
     """
 
     def __init__(self, bubble: Bubble, relative: float) -> None:
         self._bubble = bubble
-        self._relative = relative
+        self.relative = relative
         self.time = 0.0
         self.state = bubble.at_rest()
         self._network: ct.ReactorNet | None = None
@@ -51,8 +53,8 @@ class HotStage:
         reactor = _reactor(self._bubble, state)
         network = ct.ReactorNet([reactor])
         network.initial_time = time
-        network.rtol = self._relative
-        network.atol = self._relative * reactor.floor
+        network.rtol = self.relative
+        network.atol = self.relative * reactor.floor
         network.max_time_step = 0.05 * self._bubble.period
         network.max_err_test_fails = 20
         network.max_steps = 100_000
@@ -67,6 +69,7 @@ class HotStage:
         self.time = network.step()
         # Cantera ends a step by setting the reactor to the accepted solution.
         self._reactor.unpack(self._reactor.trial, self.state)
+        self._reactor.choose_rates(self.state)
         self.steps += 1
         self.evaluations = self._reactor.evaluations
 
@@ -107,15 +110,19 @@ class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
             bubble.crossing, self.scales, np.zeros(count), np.empty(eq.state_size(count)),
             np.empty(eq.state_size(count)), np.empty((eq.SCRATCH, count)), *bubble.tables,
         )  # fmt: skip
-        self.dense = bubble.dense
+        self.bubble, self.dense = bubble, False
+        self._fill_ideal = partial(_reactor_rates, *common)
+        self._fill_dense = partial(
+            _dense_rates, *net_stoichiometry(self.phase), bubble.species[:, COVOLUME].copy(),
+            *common,
+        )  # fmt: skip
+        self.choose_rates(state)
+
+    def choose_rates(self, state: Array) -> None:
+        """Take the dense gas's rates, or Cantera's net ones where the gas is thin enough."""
+        if self.bubble.dense:
+            self.dense = crowding(state, self.bubble.species) > THIN
         self.chemistry_enabled = not self.dense
-        if self.dense:
-            self._fill = partial(
-                _dense_rates, *net_stoichiometry(self.phase), bubble.species[:, COVOLUME].copy(),
-                *common,
-            )  # fmt: skip
-        else:
-            self._fill = partial(_reactor_rates, *common)
 
     def after_initialize(self, t0: float) -> None:  # noqa: ARG002 - Cantera's signature
         self.n_vars += len(self.start) - self.base
@@ -130,12 +137,12 @@ class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
         self.evaluations += 1
         if self.dense:
             gas = self.gas
-            self._fill(
+            self._fill_dense(
                 t, self.trial, np.asarray(right), gas.forward_rates_of_progress,
                 gas.reverse_rates_of_progress,
             )  # fmt: skip
         else:
-            self._fill(t, self.trial, np.asarray(right))
+            self._fill_ideal(t, self.trial, np.asarray(right))
 
     def before_component_name(self, i: int) -> str | None:
         return f"bubble state {i - self.base}" if i >= self.base else None
