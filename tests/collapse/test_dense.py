@@ -73,10 +73,13 @@ def plainly(phase: GasPhase, temperature: float, moles: Array) -> tuple[Array, A
         for name, n in reaction.products.items():
             right *= activity[gas.species_index(name)] ** n
             change[gas.species_index(name)] += n
-        if sum(reaction.products.values()) < sum(reaction.reactants.values()):
+        made = sum(reaction.products.values()) - sum(reaction.reactants.values())
+        if made < 0:  # the direction that joins takes the whole factor
             net = forward[r] * left / right - reverse[r]
-        else:
+        elif made > 0:
             net = forward[r] - reverse[r] * right / left
+        else:  # shared evenly
+            net = forward[r] * (left / right) ** 0.5 - reverse[r] * (right / left) ** 0.5
         total += change * net * 1e3 * VOLUME
         turnover += np.abs(change) * (abs(forward[r]) + abs(reverse[r])) * 1e3 * VOLUME
     return total, turnover
@@ -224,14 +227,14 @@ def test_dense_steam_is_dissociated_less() -> None:
 ARGON, OXYGEN = {"AR": 1.0}, {"O2": 1.0}
 # name: frequency Hz, amplitude Pa, radius m, gas, OH delivered with over without, rise of Tmax K
 EFFECT = {
-    "argon 355 kHz": (355e3, 2.0e5, 3.0e-6, ARGON, 0.971, 5.0),
-    "argon 1 MHz": (1e6, 4.0e5, 1.5e-6, ARGON, 0.926, 42.0),
-    "argon 52 kHz": (52e3, 1.5e5, 3.6e-6, ARGON, 0.937, 392.0),
-    "argon 26.5 kHz": (26.5e3, 1.3e5, 4.5e-6, ARGON, 0.932, 361.0),
-    "argon 20 kHz": (20e3, 1.5e5, 4.5e-6, ARGON, 1.117, 231.0),
-    "oxygen 355 kHz": (355e3, 3.0e5, 3.0e-6, OXYGEN, 0.712, 10.0),
-    "air 355 kHz": (355e3, 2.0e5, 3.0e-6, AIR, 0.597, 0.0),
-    "air 20 kHz": (20e3, 1.5e5, 4.5e-6, AIR, 1.119, 73.0),
+    "argon 355 kHz": (355e3, 2.0e5, 3.0e-6, ARGON, 0.972, 4.0),
+    "argon 1 MHz": (1e6, 4.0e5, 1.5e-6, ARGON, 0.926, 40.0),
+    "argon 52 kHz": (52e3, 1.5e5, 3.6e-6, ARGON, 0.934, 392.0),
+    "argon 26.5 kHz": (26.5e3, 1.3e5, 4.5e-6, ARGON, 0.929, 361.0),
+    "argon 20 kHz": (20e3, 1.5e5, 4.5e-6, ARGON, 1.125, 233.0),
+    "oxygen 355 kHz": (355e3, 3.0e5, 3.0e-6, OXYGEN, 0.766, 7.0),
+    "air 355 kHz": (355e3, 2.0e5, 3.0e-6, AIR, 0.751, 0.0),
+    "air 20 kHz": (20e3, 1.5e5, 4.5e-6, AIR, 1.140, 69.0),
 }
 
 
@@ -264,11 +267,11 @@ def test_effect_on_delivered_hydroxyl(name: str) -> None:
     assert hot - cooler == pytest.approx(rise, abs=5.0)
 
 
-@pytest.mark.parametrize(("name", "ratio"), [("air 355 kHz", 1.84), ("argon 355 kHz", 0.996)])
+@pytest.mark.parametrize(("name", "ratio"), [("air 355 kHz", 1.354), ("argon 355 kHz", 0.997)])
 def test_covolume_of_ho2_decides_a_weak_collapse_in_air(name: str, ratio: float) -> None:
     """A weakness, measured: 52 cm3/mol of HO2 is a hard sphere of Lennard-Jones diameter, those of
     O2, H2O and H2O2 (31.9, 30.5, 35.0) are van der Waals'. With 32 as of O2, whose diameter the
     transport data give to HO2 as well, H2O + O2 = HO2 + OH is hindered no more, and a weak collapse
-    in air delivers 1.8 times the OH; one in argon the same."""
+    in air delivers 1.35 times the OH; one in argon the same."""
     assert load_phase("h2o_o2").covolume[load_phase("h2o_o2").index("HO2")] == 5.215e-5
     assert outcome(name, ho2=3.19e-5)[0] / outcome(name)[0] == pytest.approx(ratio, rel=0.02)

@@ -41,10 +41,10 @@ def made(drive: Drive, gas: Mapping[str, float]) -> dict[str, float]:
 @pytest.mark.parametrize(
     ("drive", "share"),
     [
-        ((355e3, 2.0e5, 3.0e-6), 0.009),
-        ((355e3, 3.0e5, 3.0e-6), 0.33),
-        ((1e6, 4.0e5, 1.5e-6), 0.0133),
-        ((52e3, 1.5e5, 3.6e-6), 0.69),
+        ((355e3, 2.0e5, 3.0e-6), 0.0113),
+        ((355e3, 3.0e5, 3.0e-6), 0.349),
+        ((1e6, 4.0e5, 1.5e-6), 0.0184),
+        ((52e3, 1.5e5, 3.6e-6), 0.711),
     ],
 )
 def test_argon_delivers_more_hydroxyl_than_air(drive: Drive, share: float) -> None:
@@ -70,12 +70,12 @@ def test_air_delivers_more_than_argon_at_20_khz() -> None:
         "argon, O2": made(SLOW, {"AR": 0.79, "O2": 0.21})["OH"],
     }
     assert found["nitrogen"] < found["argon"] < found["air"] < found["argon, O2"]
-    assert found["air"] / found["argon"] == pytest.approx(1.35, rel=0.03)
-    assert found["nitrogen"] / found["argon"] == pytest.approx(0.83, rel=0.03)
+    assert found["air"] / found["argon"] == pytest.approx(1.36, rel=0.03)
+    assert found["nitrogen"] / found["argon"] == pytest.approx(0.838, rel=0.03)
 
 
 def test_nitrogen_oxides_grow_with_the_peak() -> None:
-    """355 kHz, 3 um: from a thousandth to a molecule to thousands of NO as the drive rises."""
+    """355 kHz, 3 um: from a fiftieth of a molecule to thousands of NO as the drive rises."""
     found = [made((355e3, p, 3.0e-6), AIR) for p in (1.8e5, 2.0e5, 2.3e5, 2.6e5, 3.0e5)]
     found.append(made((52e3, 1.5e5, 3.6e-6), AIR))
     peaks = [one["peak"] for one in found]
@@ -84,7 +84,7 @@ def test_nitrogen_oxides_grow_with_the_peak() -> None:
         amounts = [one[name] for one in found]
         assert all(b > 3.0 * a for a, b in pairwise(amounts)), name
     totals = [sum(one[name] for name in OXIDES) for one in found]
-    assert totals == pytest.approx([6.0, 155.0, 3665.0, 2.52e4, 1.23e5, 2.11e6], rel=0.05)
+    assert totals == pytest.approx([5.87, 149.0, 3353.0, 2.15e4, 9.48e4, 1.29e6], rel=0.05)
 
 
 SHARES = [round(0.05 * k, 2) for k in range(13)]  # of O2 in argon, 0 to 60 %
@@ -123,7 +123,7 @@ def test_best_share_of_oxygen_at_300_khz(drive: Drive) -> None:
 
     There is a maximum, 1.6 to 1.9 times pure argon, but it is expected to disagree, because 5 to
     10 % O2 bind the hydrogen of a single collapse already and more only cools it: the peak falls
-    from 5085 to 4397 K at 20 % (2 bar), our reading. The row is a yield of the liquid over all
+    from 5084 to 4388 K at 20 % (2 bar), our reading. The row is a yield of the liquid over all
     bubble sizes.
     """
     low, high = (float(one) for one in ROWS["YLD-12"].note.split(";")[0].split("-"))

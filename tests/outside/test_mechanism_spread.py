@@ -49,16 +49,16 @@ def outcome(name: str, mechanism: str = "auto") -> tuple[float, float]:
 # OH delivered with ours and h2o2.yaml, molecules; peak temperatures, K
 SPREAD = {
     "argon 355 kHz": (2.00e7, 1.77e7, 4767.0, 4889.0),
-    "argon 1 MHz": (4.53e6, 4.08e6, 5534.0, 5710.0),
-    "argon 20 kHz": (2.42e8, 1.96e8, 4906.0, 4906.0),
-    "oxygen 355 kHz": (8.77e6, 7.92e6, 3203.0, 3176.0),
-    "air 355 kHz": (1.81e5, 1.35e6, 2586.0, 2585.0),
+    "argon 1 MHz": (4.52e6, 4.08e6, 5532.0, 5709.0),
+    "argon 20 kHz": (2.44e8, 1.95e8, 4909.0, 4907.0),
+    "oxygen 355 kHz": (9.44e6, 7.96e6, 3200.0, 3166.0),
+    "air 355 kHz": (2.27e5, 1.65e6, 2585.0, 2584.0),
 }
 
 
 @pytest.mark.parametrize("name", CASES)
 def test_spread(name: str) -> None:
-    """OH of ours over theirs: 1.13, 1.11, 1.24, 1.11; in weak air 0.13, explained below."""
+    """OH of ours over theirs: 1.13, 1.11, 1.25, 1.19; in weak air 0.14, explained below."""
     ours, theirs, hot, hot_theirs = SPREAD[name]
     assert outcome(name) == (pytest.approx(ours, rel=0.02), pytest.approx(hot, abs=10.0))
     found = outcome(name, FLAME)
@@ -123,15 +123,15 @@ def mixed(
 def test_weak_air_hangs_on_one_reaction(tmp_path: Path) -> None:
     """Ours for HO2 + OH = H2O + O2 alone takes two thirds of the sevenfold (in logarithms) away.
 
-    Its reverse is what starts radicals in damp air at 2586 K. GRI-Mech 3.0 adds a second term that
+    Its reverse is what starts radicals in damp air at 2585 K. GRI-Mech 3.0 adds a second term that
     outgrows the first above 1500 K (1.7e14 cm3/mol/s in all at 2500 K); ours is Keyser (1988) as
     Burke et al. (2012) took it, 3.2e13, with a factor 1.6 of uncertainty that does not cover this.
     Keyser measured near room temperature (254 to 382 K, from memory): ours is an extrapolation.
     """
     ours, theirs = outcome("air 355 kHz")[0], outcome("air 355 kHz", FLAME)[0]
     swapped = outcome("air 355 kHz", mixed(tmp_path, _is_exchange, EXCHANGE))[0]
-    assert theirs / ours == pytest.approx(7.5, rel=0.03)
-    assert swapped / ours == pytest.approx(1.96, rel=0.03)
+    assert theirs / ours == pytest.approx(7.29, rel=0.03)
+    assert swapped / ours == pytest.approx(2.00, rel=0.03)
 
 
 def test_the_two_rate_constants() -> None:
@@ -157,7 +157,7 @@ def test_falloff_makes_the_peak_lower(tmp_path: Path, name: str) -> None:
 
 
 @pytest.mark.parametrize(
-    ("name", "gain"), [("argon 355 kHz", 1.082), ("argon 1 MHz", 1.069), ("argon 20 kHz", 1.080)]
+    ("name", "gain"), [("argon 355 kHz", 1.082), ("argon 1 MHz", 1.068), ("argon 20 kHz", 1.079)]
 )
 def test_thermo_raises_hydroxyl(tmp_path: Path, name: str, gain: float) -> None:
     """Our thermo alone: OH lies lower, and theirs is a polynomial run on above 3500 K."""

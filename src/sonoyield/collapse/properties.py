@@ -16,6 +16,7 @@ from sonoyield.describe.gas import GAS_CONSTANT, Array
 
 COLDEST = 200.0  # K, lowest temperature of the thermo polynomials
 COLDEST_TRANSPORT = 100.0  # K; the transport fits, made from 200 K up, are smooth down to here
+TRACE = 1e-9  # mole fraction; what is rarer does not count in the transport of the mixture
 LOW, HIGH = 9, 10  # columns of an interval's bounds
 
 
@@ -80,7 +81,7 @@ def mixture_conductivity(
     arithmetic = 0.0
     harmonic = 0.0
     for k in range(x.size):
-        if x[k] <= 0.0:
+        if x[k] <= TRACE:
             continue
         if k == water:
             one = steam_conductivity(temperature)
@@ -109,7 +110,7 @@ def mixture_diffusivity(
     mass = 0.0
     resistance = 0.0
     for j in range(x.size):
-        if j == k or x[j] <= 0.0:
+        if j == k or x[j] <= TRACE:
             continue
         c = diffusivity[k, j]
         mass += x[j] * molar_mass[j]
