@@ -40,14 +40,14 @@ class Accuracy:
     """Numerical choices of a run.
 
     ``relative`` tolerance asked for; ``split``: let the compiled stage carry the cold gas (else
-    the reactor carries all of it); ``steps``: limit on the reactor's steps; ``tighten``: how often
-    a run whose ledger does not close is repeated with a tenth of the tolerance.
+    the reactor carries all of it); ``steps``: limit on the reactor's steps a window; ``tighten``:
+    how often a run whose ledger does not close is repeated with a tenth of the tolerance.
     """
 
     relative: float = 1e-6
     split: bool = True
-    steps: int = 100_000
-    tighten: int = 2
+    steps: int = 40_000
+    tighten: int = 4
 
 
 def follow(bubble: Bubble, collapses: int = 1, accuracy: Accuracy | None = None) -> History:
@@ -85,6 +85,7 @@ class _Run:
     ) -> None:
         self.bubble, self.accuracy = bubble, accuracy
         self.wanted = collapses + 2  # marks: rest, the first main maximum, one a window
+        self.most = accuracy.steps * collapses
         self.relative = COLD_SHARE * accuracy.relative
         self.absolute = bubble.tolerances(self.relative)
         self.time, self.state = 0.0, bubble.at_rest()
@@ -158,7 +159,7 @@ class _Run:
             self.state[:] = hot.state
             if hot.time >= deadline:
                 stopped = NO_MAXIMUM
-            elif before["hot_steps"] + hot.steps >= self.accuracy.steps:
+            elif before["hot_steps"] + hot.steps >= self.most:
                 stopped = STEP_LIMIT
             elif not self._reactive():
                 break

@@ -13,6 +13,7 @@ from sonoyield.describe.gas import Array
 
 ELEMENT_LIMIT = 1e-9  # relative, of the well-mixed gas
 ENERGY_LIMIT = 1e-5  # of the work done
+TRACE = 1e-12  # of all atoms: an element that is not there has no balance
 LEAST_WORK = 1e-9  # of p0 V0: less work than that does not tell closure from rounding
 
 
@@ -103,11 +104,11 @@ def _stored(history: History, row: int) -> float:
 
 
 def _element_error(history: History, row: int) -> float:
-    """Largest over the elements of |gas + crossed - start| / (start + |crossed|)."""
+    """Largest over the elements that are there of |gas + crossed - start| / (start + |crossed|)."""
     atoms: Array = history.bubble.phase.atoms
     start = atoms @ history.bubble.moles
     crossed = atoms @ history.crossed[row]
     whole = start + atoms @ np.abs(history.crossed[row])
-    present = whole > 0.0
+    present = whole > TRACE * whole.sum()
     error = np.abs(atoms @ history.moles[row] + crossed - start)[present] / whole[present]
     return float(np.nan_to_num(error.max(initial=0.0), nan=np.inf))

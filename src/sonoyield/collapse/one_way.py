@@ -79,7 +79,11 @@ def follow_one_way(
 def _once(bubble: Bubble, collapses: int, accuracy: Accuracy) -> OneWayHistory:
     frozen = _FrozenRun(bubble, collapses, accuracy).complete()
     warm = np.flatnonzero(frozen.temperature > WARM)
-    return _react(frozen, int(warm[0]) if len(warm) else len(frozen.times) - 1, accuracy)
+    return _react(
+        frozen,
+        int(warm[0]) if len(warm) else len(frozen.times) - 1,
+        replace(accuracy, steps=accuracy.steps * collapses),
+    )
 
 
 class _FrozenRun(_Run):
@@ -100,7 +104,7 @@ class _FrozenRun(_Run):
         if self.counters["cold_steps"] == before:
             return FAILED
         self.implicit_only = False  # the record was full, or one more attempt decides
-        most = COLD_LIMIT * self.accuracy.steps
+        most = COLD_LIMIT * self.most
         return STEP_LIMIT if self.counters["cold_steps"] >= most else ""
 
 
