@@ -25,18 +25,20 @@ def discard_stale() -> None:
     """Delete compiled stages that were made from other sources than these."""
     sources = _fingerprint()
     for place in _places():
-        with suppress(OSError):  # a place that may not be written to is not ours to keep
+        with suppress(OSError):  # not ours to write to: the compiler takes the next place too
             _discard(place, sources)
+            return
 
 
 def _discard(place: Path, sources: str) -> None:
+    place.mkdir(parents=True, exist_ok=True)
     stamp = place / STAMP
-    if not place.is_dir() or (stamp.is_file() and stamp.read_text() == sources):
+    if stamp.is_file() and stamp.read_text() == sources:
         return
+    stamp.write_text(sources)
     for pattern in ("*.nbi", "*.nbc"):
         for file in place.glob(pattern):
             file.unlink(missing_ok=True)
-    stamp.write_text(sources)
 
 
 def _fingerprint() -> str:
