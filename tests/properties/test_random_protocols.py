@@ -21,7 +21,7 @@ SPECIES = ("AR", "HE", "KR", "XE", "O2", "N2", "H2")
 NAMES = ("argon", "helium", "krypton", "xenon", "oxygen", "nitrogen", "hydrogen", "air")
 ACCOMMODATION = ("water", "radicals", "OH", "H", "O", "HO2", "H2O2", "O3")
 MOST_GAS = 0.0999  # of the liquid's volume; 0.1 is the limit
-LEAST_SHARE_WITH_NUMBERS = 0.75  # the rest take the step limit or leave the ledger open
+LEAST_SHARE_WITH_NUMBERS = 0.9  # the rest take the step limit or leave the ledger open
 
 # Protocols are built inside the rules: nothing is drawn and thrown away.
 RANDOM = settings(

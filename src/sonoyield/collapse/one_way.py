@@ -22,7 +22,7 @@ from sonoyield.collapse.exchange import COVOLUME
 from sonoyield.collapse.follow import FAILED, STEP_LIMIT, Accuracy, _Run
 from sonoyield.collapse.history import History, Recorder
 from sonoyield.collapse.ledger import balance
-from sonoyield.collapse.reactor import KILO, OWN, IntegrationError
+from sonoyield.collapse.reactor import KILO, OWN, AddedStates, IntegrationError
 from sonoyield.describe.gas import Array
 
 WARM = 600.0  # K; the reactor begins where the gas is first warmer, fresh contents are inert below
@@ -222,7 +222,7 @@ class _ReactorStage:
         return abs(volume - there) / there
 
 
-class _CompressedReactor(ct.ExtensibleIdealGasMoleReactor):
+class _CompressedReactor(AddedStates):
     """Cantera's reactor in a given volume; what crossed and the energy received are added."""
 
     def prepare(self, bubble: Bubble, state: Array, compression: Compression) -> None:
@@ -249,15 +249,6 @@ class _CompressedReactor(ct.ExtensibleIdealGasMoleReactor):
         self.start[OWN : self.base] = state[eq.MOLES : eq.MOLES + count] / KILO
         self.start[self.base : -1] = state[eq.MOLES + count + self.crossing] / KILO
 
-    def after_initialize(self, t0: float) -> None:  # noqa: ARG002 - Cantera's signature
-        self.n_vars += len(self.start) - self.base
-
-    def after_get_state(self, y: Any) -> None:
-        np.asarray(y)[:] = self.start
-
-    def after_update_state(self, y: Any) -> None:
-        self.trial = np.asarray(y)
-
     def after_eval(self, t: float, left: Any, right: Any) -> None:
         self.evaluations += 1
         slopes = np.asarray(right)
@@ -269,9 +260,6 @@ class _CompressedReactor(ct.ExtensibleIdealGasMoleReactor):
             )  # fmt: skip
             slopes[OWN : self.base] = self.production / KILO
         self.rates(t, self.trial, np.asarray(left), slopes)
-
-    def before_component_name(self, i: int) -> str | None:
-        return f"exchange {i - self.base}" if i >= self.base else None
 
     def unpack(self, y: Array, state: Array) -> None:
         """Fill a row from the reactor's state: temperature, contents, crossed, energy."""

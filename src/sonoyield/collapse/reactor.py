@@ -87,7 +87,30 @@ class HotStage:
         return state
 
 
-class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
+class AddedStates(ct.ExtensibleIdealGasMoleReactor):
+    """Cantera's reactor with further states behind its own ``base`` ones.
+
+    ``start`` is the whole vector to begin from, ``trial`` the one that Cantera has set last.
+    """
+
+    base: int
+    start: Array
+    trial: Array
+
+    def after_initialize(self, t0: float) -> None:  # noqa: ARG002 - Cantera's signature
+        self.n_vars += len(self.start) - self.base
+
+    def after_get_state(self, y: Any) -> None:
+        np.asarray(y)[:] = self.start
+
+    def after_update_state(self, y: Any) -> None:
+        self.trial = np.asarray(y)
+
+    def before_component_name(self, i: int) -> str | None:
+        return f"added state {i - self.base}" if i >= self.base else None
+
+
+class _BubbleReactor(AddedStates):
     """Cantera's reactor with the bubble's wall, exchange and ledger added to its state."""
 
     def prepare(self, bubble: Bubble, state: Array) -> None:
@@ -124,15 +147,6 @@ class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
             self.dense = crowding(state, self.bubble.species) > THIN
         self.chemistry_enabled = not self.dense
 
-    def after_initialize(self, t0: float) -> None:  # noqa: ARG002 - Cantera's signature
-        self.n_vars += len(self.start) - self.base
-
-    def after_get_state(self, y: Any) -> None:
-        np.asarray(y)[:] = self.start
-
-    def after_update_state(self, y: Any) -> None:
-        self.trial = np.asarray(y)
-
     def after_eval(self, t: float, left: Any, right: Any) -> None:  # noqa: ARG002 - likewise
         self.evaluations += 1
         if self.dense:
@@ -143,9 +157,6 @@ class _BubbleReactor(ct.ExtensibleIdealGasMoleReactor):
             )  # fmt: skip
         else:
             self._fill_ideal(t, self.trial, np.asarray(right))
-
-    def before_component_name(self, i: int) -> str | None:
-        return f"bubble state {i - self.base}" if i >= self.base else None
 
     def unpack(self, y: Array, state: Array) -> None:
         self._unpack(y, state)

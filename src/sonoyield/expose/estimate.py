@@ -41,8 +41,8 @@ NUMBERS = ("collapse", "counts", "energy", "driven", "doses", "oxidant", "ionisa
 MUCH_NITROGEN = 0.1  # share of the dry gas
 AIR_WARNING = (
     "A gas of one temperature makes too little in nitrogen and air, whose core is hotter than "
-    "their mean: at 355 kHz, 2 bar, 3 um a radially resolved gas gave 23 times the OH. Do not "
-    "rank air against argon by these numbers."
+    "their mean: at 355 kHz, 2 bar, 3 um an independent, radially resolved model gave 23 "
+    "times the OH. Do not rank air against argon by these numbers."
 )
 FAST_WALL = 0.5  # of the sound speed: Keller-Miksis begins to err
 
