@@ -93,6 +93,8 @@ class Tables:
         self.covolumes = by_species(folder / "covolumes.csv")
         self.transport = by_species(folder / "transport.csv")
         self.collisions = read_rows(folder / "collision_limit.csv")
+        self.aqueous = read_rows(folder / "aqueous_reactions.csv")
+        self.dissolved = read_rows(folder / "aqueous_transport.csv")
         self.intervals: dict[str, list[Row]] = {}
         for row in read_rows(folder / "thermo_coefficients.csv"):
             self.intervals.setdefault(row["species"], []).append(row)
@@ -308,6 +310,29 @@ SOURCES: dict[str, tuple[str, str, dict[str, str]]] = {
         "gas cooler and denser than a bubble's, which is hot when dense.",
         {"T (K)": "temperature_K", "p (Pa)": "pressure_Pa", "id": "id", "equation": "equation",
         "direction": "direction", "times the limit": "ratio"}),
+    "Reactions in water": ("aqueous", "Of the liquid film around the bubble. Its equation leaves "
+        "out water, H+ and OH-. O2- and NO2- stand beside their acids, with the pH held (pKa rows; "
+        "HNO2's proton moves as HO2's does, by diffusion). Lumped: the ozonide of O3 and O2- is "
+        "taken as OH + O2 at once (130 us at pH 7); peroxynitrite and its acid are one species, "
+        "so are HNO4 and its ion. O(3P) + H2O, never measured in cold water, is left out or taken "
+        "at 2e3 1/s, as the user chooses. Left out, since slower than diffusion out of a film: "
+        "2 NO + O2, 2 HNO2, HO2 or O2- with H2O2, O3 with HO2 or OH-, and the decay of "
+        "peroxynitrous acid (within a second, far from the bubble; 28 % gives OH + NO2). f: "
+        "uncertainty factor, a judgement. "
+        "Constants without a temperature form are those of 25 degC at every temperature; fits "
+        "begin at 20 degC and go on below with their slope there.",
+        {"id": "id", "reaction": "reaction", "in the film": "film", "k at 25 degC": "k_298K",
+        "unit": "unit", "form": "T_form", "parameters": "T_params", "convention":
+        "rate_convention", "f": "uncertainty_factor", "other values": "alternatives",
+        "source": "source", "provenance": "provenance", "note": "note"}),
+    "Diffusion and solubility in water": ("dissolved", "Of the liquid film. Where no other form "
+        "is given, D goes with T over viscosity (Stokes, Einstein 1905). Henry's constants are of "
+        "the undissociated species; those of the atoms H and O are guesses of their order. What "
+        "has no row does not go back into the gas.",
+        {"species": "film", "kind": "kind", "at 25 degC": "value", "unit": "unit",
+        "form": "T_form", "parameters": "T_params", "f": "uncertainty_factor",
+        "other values": "alternatives", "source": "source", "provenance": "provenance",
+        "note": "note"}),
 }  # fmt: skip
 
 

@@ -18,6 +18,7 @@ from sonoyield.describe.protocol import Protocol
 
 HERE = Path(__file__).parent
 BAD = sorted((HERE / "bad").glob("*.toml"))
+EXAMPLES = sorted((HERE.parents[1] / "examples").glob("*.toml"))
 QUANTITIES = {
     "drive.frequency": ("kHz", 1e3, "1 Hz"),
     "drive.pressure": ("bar", 1e5, "31 bar"),
@@ -58,22 +59,41 @@ def test_good_file_in_si() -> None:
             "temperature": 298.15,
             "ambient_pressure": 101325.0,
             "volume": 1e-4,
+            # terephthalate's row; iodide's row but for its diffusivity; the default diffusivity
+            "scavengers": {
+                "terephthalate": {"k": 4e6, "concentration": 2.0, "diffusivity": 7e-10},
+                "iodide": {"k": 1.1e7, "concentration": 0.01, "diffusivity": 2e-9},
+                "buffer.B-2": {"k": 5e6, "concentration": 10.0, "diffusivity": 1e-9},
+            },
         },
         "gas": {"mixture": {"AR": 0.8, "O2": 0.2}},
         "bubbles": {"radius": 3e-6, "number_density": 1e9},
         "field": {"kind": "uniform"},
         "model": {
             "radial": "keller_miksis",
-            "interior": "mixed",
-            "coupling": "one_way",
+            "interior": "resolved",
+            "cells": 24,
+            "film": True,
+            "wall": "thermal_layer",
+            "temperature_jump": True,
+            "oxygen_atom": "water",
+            "coupling": "two_way",
             "mechanism": "auto",
             "excluded_volume": True,
             "vapour": True,
-            "uptake": False,
+            "uptake": True,
             "accommodation": {"water": 0.35, "radicals": 0.4, "H2O2": 0.1},
             "collapses": 3,
         },
     }
+
+
+def test_mixed_has_no_film_and_may_be_coupled_one_way() -> None:
+    model = Protocol.load(HERE / "good_mixed.toml").model
+    assert (model.interior, model.coupling, model.film) == ("mixed", "one_way", False)
+    data = minimal() | {"model": {"interior": "mixed"}}
+    assert not Protocol.from_dict(data).model.film
+    assert data["model"] == {"interior": "mixed"}
 
 
 def test_defaults() -> None:
@@ -86,7 +106,10 @@ def test_defaults() -> None:
     assert protocol.gas.mixture == {"AR": 1.0}
     model = protocol.dump()["model"]
     assert model["accommodation"] == {"water": 0.4, "radicals": 0.4}
-    assert (model["radial"], model["interior"]) == ("keller_miksis", "mixed")
+    assert (model["radial"], model["interior"]) == ("keller_miksis", "resolved")
+    assert (model["cells"], model["film"], model["oxygen_atom"]) == (None, True, "persists")
+    assert (model["wall"], model["temperature_jump"]) == ("liquid_temperature", False)
+    assert protocol.liquid.scavengers == {}
     assert (model["coupling"], model["mechanism"], model["collapses"]) == ("two_way", "auto", 1)
     assert model["excluded_volume"] and model["vapour"] and model["uptake"]
 
@@ -161,6 +184,17 @@ def test_frozen_and_copied() -> None:
     with pytest.raises(ValidationError):
         protocol.drive.pressure = 1.0
     assert pickle.loads(pickle.dumps(protocol)) == protocol
+
+
+@pytest.mark.parametrize("path", EXAMPLES, ids=lambda path: path.stem)
+def test_examples_load(path: Path) -> None:
+    model = Protocol.load(path).model
+    assert (model.interior, model.film) == ("resolved", True)
+
+
+@pytest.mark.parametrize("cells", [8, 80])
+def test_ends_of_the_range_of_cells(cells: int) -> None:
+    assert Protocol.from_dict(minimal() | {"model": {"cells": cells}}).model.cells == cells
 
 
 @pytest.mark.parametrize("path", BAD, ids=lambda path: path.stem)
@@ -258,6 +292,33 @@ def test_light_import() -> None:
     assert done.stdout.strip() == "set()"
 
 
+def resolved() -> st.SearchStrategy[dict[str, Any]]:
+    """Choices that go with the resolved interior and its film, each given or left out."""
+    return st.fixed_dictionaries(
+        {},
+        optional={
+            "interior": st.just("resolved"),
+            "cells": st.integers(8, 80),
+            "film": st.just(True),
+            "wall": st.sampled_from(["liquid_temperature", "thermal_layer"]),
+            "temperature_jump": st.booleans(),
+            "oxygen_atom": st.sampled_from(["persists", "water"]),
+            "coupling": st.just("two_way"),
+        },
+    )
+
+
+def mixed() -> st.SearchStrategy[dict[str, Any]]:
+    """Choices that go with the mixed interior."""
+    return st.fixed_dictionaries(
+        {"interior": st.just("mixed")},
+        optional={
+            "film": st.just(False),
+            "coupling": st.sampled_from(["two_way", "one_way"]),
+        },
+    )
+
+
 @st.composite
 def valid(draw: st.DrawFn) -> dict[str, Any]:
     """Any protocol inside the ranges and the rules, made so rather than filtered."""
@@ -298,6 +359,7 @@ def valid(draw: st.DrawFn) -> dict[str, Any]:
         },
         "model": {"collapses": draw(st.integers(1, 1000)), "vapour": draw(st.booleans())},
     }
+    data["model"] |= draw(resolved() | mixed())
     if kind == "saline":
         data["liquid"]["salinity"] = f"{salinity!r} g/L"
     if draw(st.booleans()):
@@ -315,6 +377,7 @@ def test_any_valid_protocol_loads(data: dict[str, Any]) -> None:
         section, name = key.split(".")
         number = float(data[section][name].split()[0])
         assert values[section][name] == pytest.approx(number * size, rel=1e-12)
+    assert values["model"]["film"] == (values["model"]["interior"] == "resolved")
 
 
 @settings(max_examples=200, deadline=None)  # the first loads pint

@@ -46,6 +46,23 @@ READ = [
     ("time", "30 day", 2592000.0),
     ("salinity", "9 g/L", 9.0),
     ("salinity", "0.009 g/mL", 9.0),
+    ("concentration", "2 mmol/L", 2.0),
+    ("concentration", "2 mM", 2.0),
+    ("concentration", "2 umol/mL", 2.0),
+    ("concentration", "2 mol/m³", 2.0),
+    ("concentration", "1 pmol/L", 1e-9),
+    ("concentration", "10 mol/L", 1e4),
+    ("rate_constant", "4e9 L/mol/s", 4e6),
+    ("rate_constant", "4e9 L mol-1 s-1", 4e6),
+    ("rate_constant", "4e9 L·mol⁻¹·s⁻¹", 4e6),
+    ("rate_constant", "4e9 M^-1 s^-1", 4e6),
+    ("rate_constant", "4e9 /M/s", 4e6),
+    ("rate_constant", "4e6 m3/mol/s", 4e6),
+    ("rate_constant", "1e3 L/mol/s", 1.0),
+    ("rate_constant", "1e11 L/mol/s", 1e8),
+    ("diffusivity", "1e-9 m^2/s", 1e-9),
+    ("diffusivity", "1e-5 cm²/s", 1e-9),
+    ("diffusivity", "1000 um^2/s", 1e-9),
 ]
 
 REFUSED = [
@@ -88,6 +105,18 @@ REFUSED = [
     ("number_density", "0.5 / m^3", "allowed 1 / m^3 to 1e+18 / m^3"),
     ("time", "31 day", "allowed 1 us to 30 day"),
     ("salinity", "61 g/L", "allowed 0 g/L to 60 g/L"),
+    ("concentration", "0 mmol/L", "allowed 1 pmol/L to 10 mol/L"),
+    ("concentration", "-2 mmol/L", "out of range"),
+    ("concentration", "11 mol/L", "did you mean 11 mmol/L?"),
+    ("concentration", "2 g/L", "not that of an amount per volume"),
+    ("concentration", "2 mmol/kg", "not that of an amount per volume"),
+    ("rate_constant", "4e9 m^3/mol/s", "did you mean 4e+09 L/mol/s?"),
+    ("rate_constant", "999 L/mol/s", "allowed 1000 L/mol/s to 1e+11 L/mol/s"),
+    ("rate_constant", "1.01e11 L/mol/s", "out of range"),
+    ("rate_constant", "4e9 1/s", "not that of a second-order rate constant"),
+    ("rate_constant", "7e-12 cm^3/s", "not that of a second-order rate constant"),
+    ("diffusivity", "1e-5 m^2/s", "did you mean 1e-09 m^2/s?"),
+    ("diffusivity", "1e-9 m/s", "not that of a diffusivity"),
 ]
 
 

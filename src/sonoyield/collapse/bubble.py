@@ -99,12 +99,9 @@ class Bubble:
         heat_capacity_and_enthalpy(temperature, phase.nasa, capacity, enthalpy)
         table[:, ENTHALPY_AT_LIQUID] = enthalpy
         for k, name in enumerate(phase.species):
-            share = self._accommodation_of(name)
-            if share is None:
-                continue
-            speed = sqrt(8.0 * GAS_CONSTANT * temperature / (pi * phase.molar_mass[k]))
-            table[k, SURFACE] = 4.0 / (share * speed)
-            table[k, CROSSES] = 1.0
+            if self._crosses(name):
+                table[k, SURFACE] = self.surface_resistance(name)
+                table[k, CROSSES] = 1.0
         table[phase.index("H2O"), EQUILIBRIUM] = (
             self.liquid.saturation_pressure / (GAS_CONSTANT * temperature)
         )
@@ -191,12 +188,18 @@ class Bubble:
         drive = min(self.pressure_amplitude / self.ambient_pressure, 1.0)
         return 30.0 * max(drive, 1e-3) ** 2 * self.ambient_pressure * self.radius**3
 
-    def _accommodation_of(self, name: str) -> float | None:
-        if name == "H2O":
-            return self.accommodation["water"] if self.vapour else None
-        if name not in ABSORBED or not self.uptake:
-            return None
-        return self.accommodation[name if name in self.accommodation else "radicals"]
+    def surface_resistance(self, species: str) -> float:
+        """Kinetic resistance of the surface, s/m: 4/(alpha c), c at the liquid's temperature."""
+        if species == "H2O":
+            share = self.accommodation["water"]
+        else:
+            share = self.accommodation.get(species, self.accommodation["radicals"])
+        mass = self.phase.molar_mass[self.phase.index(species)]
+        speed = sqrt(8.0 * GAS_CONSTANT * self.liquid.temperature / (pi * mass))
+        return float(4.0 / (share * speed))
+
+    def _crosses(self, name: str) -> bool:
+        return self.vapour if name == "H2O" else name in ABSORBED and self.uptake
 
 
 CONTENTS_FLOOR = 1e-3  # of the contents; times the relative tolerance it is a few molecules

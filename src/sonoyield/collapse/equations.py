@@ -171,35 +171,58 @@ def rates(
     out[SPEED] = acceleration
     out[TEMPERATURE] = warming
 
-    # Ledger: where the sound's work goes.
-    wall = pressure - (2.0 * tension + 4.0 * viscosity * speed) / radius
+    fill_ledger(
+        radius, speed, acceleration, pressure, sound, -heat, carried, constants,
+        out[MOLES + 2 * count :],
+    )
+
+
+@njit(cache=True, error_model="numpy")
+def fill_ledger(
+    radius: float,
+    speed: float,
+    acceleration: float,
+    pressure: float,
+    sound: float,
+    heat: float,
+    carried: float,
+    constants: Array,
+    ledger: Array,
+) -> None:
+    """Fill ``ledger`` (6,), W: where the sound's work goes; ``heat`` and ``carried`` outwards."""
+    density, viscosity = constants[DENSITY], constants[VISCOSITY]
+    area = 4.0 * pi * radius * radius
+    growth = area * speed
+    far = constants[AMBIENT_PRESSURE] + sound
+    wall = pressure - (2.0 * constants[SURFACE_TENSION] + 4.0 * viscosity * speed) / radius
     inertia = density * (radius * acceleration + 1.5 * speed * speed)
     bulge = area * acceleration + 8.0 * pi * radius * speed * speed
-    ledger = out[MOLES + 2 * count :]
     ledger[WORK] = -sound * growth
     ledger[VISCOUS] = 4.0 * viscosity * speed / radius * growth
     ledger[RADIATION] = -(inertia - (wall - far)) * growth
-    ledger[HEAT] = -heat
+    ledger[HEAT] = heat
     ledger[CARRIED] = carried
     ledger[FAR_FIELD] = density * bulge * bulge / (4.0 * pi * constants[SOUND_SPEED])
 
 
-@njit(cache=True, error_model="numpy")
-def stored_energy(
-    state: Array, count: int, constants: Array, nasa: Array, scratch: Array
-) -> float:
-    """Energy stored in motion, surface, displaced volume and gas, J.
+def stored_energy(state: Array, constants: Array) -> float:
+    """Energy stored in motion, surface and displaced volume, J.
 
-    2 pi rho R^3 U^2 + 4 pi R^2 sigma + p0 V + sum n_k u_k, in the mechanism's enthalpy zero.
+    2 pi rho R^3 U^2 + 4 pi R^2 sigma + p0 V; the gas's own is ``internal_energy``.
     """
-    radius, speed, temperature = state[RADIUS], state[SPEED], state[TEMPERATURE]
-    heat_capacity_and_enthalpy(temperature, nasa, scratch[CAPACITY], scratch[ENTHALPY])
-    gas = 0.0
-    for k in range(count):
-        gas += state[MOLES + k] * (scratch[ENTHALPY, k] - GAS_CONSTANT * temperature)
-    return (
+    radius, speed = float(state[RADIUS]), float(state[SPEED])
+    return float(
         2.0 * pi * constants[DENSITY] * radius**3 * speed * speed
         + 4.0 * pi * radius * radius * constants[SURFACE_TENSION]
         + constants[AMBIENT_PRESSURE] * 4.0 / 3.0 * pi * radius**3
-        + gas
     )
+
+
+@njit(cache=True, error_model="numpy")
+def internal_energy(temperature: float, moles: Array, nasa: Array, scratch: Array) -> float:
+    """Internal energy sum n_k u_k of gas at one temperature, J, in the mechanism's zero."""
+    heat_capacity_and_enthalpy(temperature, nasa, scratch[CAPACITY], scratch[ENTHALPY])
+    gas = 0.0
+    for k in range(moles.size):
+        gas += moles[k] * (scratch[ENTHALPY, k] - GAS_CONSTANT * temperature)
+    return gas

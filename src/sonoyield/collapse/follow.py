@@ -1,8 +1,7 @@
 """Follow one bubble from rest through its main collapses, wall and chemistry coupled both ways.
 
 A compiled explicit stage carries the cold, inert gas; Cantera's reactor network carries it while
-it is hot or holds radicals. A *main expansion maximum* is one with no larger radius within half a
-period before or after it; a *window* ends at one.
+it is hot or holds radicals. `marks` says where windows end.
 """
 
 from __future__ import annotations
@@ -17,6 +16,7 @@ from sonoyield.collapse import equations as eq
 from sonoyield.collapse.bubble import Bubble
 from sonoyield.collapse.history import History, Recorder
 from sonoyield.collapse.ledger import balance
+from sonoyield.collapse.marks import Marks, scratch
 from sonoyield.collapse.reactor import HotStage, IntegrationError
 from sonoyield.describe.gas import ABSORBED, Array
 
@@ -32,7 +32,6 @@ QUIET_DELIVERED, QUIET_CONTENTS = 1e-4, 1e-9
 PATIENCE = 2.5  # periods without a main maximum before the run ends
 COLD_SHARE = 0.1  # of the tolerance asked for: it costs little there and closes the ledger
 WEAK_SHARE = 0.5  # likewise where the reactor carries the compression from WARM_USED on
-COLD_STEPS = 20_000  # accepted steps of the explicit stage before it counts as stiff
 
 
 @dataclass(frozen=True)
@@ -41,13 +40,15 @@ class Accuracy:
 
     ``relative`` tolerance asked for; ``split``: let the compiled stage carry the cold gas (else
     the reactor carries all of it); ``steps``: limit on the reactor's steps a window; ``tighten``:
-    how often a run whose ledger does not close is repeated with a tenth of the tolerance.
+    how often a run whose ledger does not close is repeated with a tenth of the tolerance;
+    ``seconds``: limit on the time of a resolved run.
     """
 
     relative: float = 1e-6
     split: bool = True
     steps: int = 40_000
     tighten: int = 4
+    seconds: float = 120.0
 
 
 def follow(bubble: Bubble, collapses: int = 1, accuracy: Accuracy | None = None) -> History:
@@ -58,7 +59,7 @@ def follow(bubble: Bubble, collapses: int = 1, accuracy: Accuracy | None = None)
     """
     accuracy = accuracy or Accuracy()
     if bubble.pressure_amplitude == 0.0:
-        return _at_rest(bubble)
+        return at_rest(bubble)
     warm = WARM_USED if bubble.mixture.get("H2") else WARM_FRESH
     run = _Run(bubble, collapses, accuracy, warm)
     history = run.complete()
@@ -73,7 +74,7 @@ def follow(bubble: Bubble, collapses: int = 1, accuracy: Accuracy | None = None)
     return history
 
 
-def _at_rest(bubble: Bubble) -> History:
+def at_rest(bubble: Bubble) -> History:
     """Without sound the bubble stays in the equilibrium that it starts from."""
     times = np.array([0.0, PATIENCE * bubble.period])
     return History(bubble, times, np.array([bubble.at_rest()] * 2), (0,), NO_MAXIMUM)
@@ -84,14 +85,12 @@ class _Run:
         self, bubble: Bubble, collapses: int, accuracy: Accuracy, warm: float = WARM_FRESH
     ) -> None:
         self.bubble, self.accuracy = bubble, accuracy
-        self.wanted = collapses + 2  # marks: rest, the first main maximum, one a window
         self.most = accuracy.steps * collapses
         self.relative = COLD_SHARE * accuracy.relative
         self.absolute = bubble.tolerances(self.relative)
         self.time, self.state = 0.0, bubble.at_rest()
         self.record = Recorder(self.state)
-        self.marks = [0]
-        self.crests: list[tuple[float, float]] = []
+        self.marks = Marks(bubble, self.record, collapses + 2)  # rest, a maximum, one a window
         self.step = 1e-4 * bubble.period
         self.implicit_only = not accuracy.split
         self.hot = HotStage(bubble, accuracy.relative)
@@ -104,16 +103,16 @@ class _Run:
 
     def complete(self) -> History:
         stopped = ""
-        while not stopped and len(self.marks) < self.wanted:
+        while not stopped and not self.marks.complete:
             stopped = self._hot() if self._reactive() else self._cold()
         times, states = self.record.arrays()
         return History(
-            self.bubble, times, states, tuple(self.marks), stopped, dict(self.counters)
+            self.bubble, times, states, tuple(self.marks.rows), stopped, dict(self.counters)
         )
 
     @property
     def deadline(self) -> float:
-        return float(self.record.times[self.marks[-1]]) + PATIENCE * self.bubble.period
+        return self.marks.latest + PATIENCE * self.bubble.period
 
     def _reactive(self) -> bool:
         if self.implicit_only or self.state[eq.TEMPERATURE] > self.warm:
@@ -122,7 +121,7 @@ class _Run:
         return bool(left > max(self.few, QUIET_DELIVERED * delivered))
 
     def _cold(self) -> str:
-        times, states = _scratch(len(self.state))
+        times, states = scratch(len(self.state))
         why, taken, self.step = cold.integrate_frozen(
             self.time, self.deadline, self.step, self.state, self.warm, self.relative,
             self.absolute, *self.bubble.tables, times, states,
@@ -136,7 +135,7 @@ class _Run:
         if why in (cold.STIFF, cold.FAILED):
             self.implicit_only = True
         elif why == cold.MAXIMUM:
-            self._crest(self.time, self.state, self.record.last)
+            self._crest(self.time, self.state)
         return ""
 
     def _hot(self) -> str:
@@ -145,7 +144,7 @@ class _Run:
         hot.begin(self.time, self.state)
         self.warm = WARM_USED
         stopped = ""
-        while not stopped and len(self.marks) < self.wanted:
+        while not stopped and not self.marks.complete:
             rising = self.state[eq.SPEED] > 0.0
             try:
                 hot.step()
@@ -184,62 +183,19 @@ class _Run:
             if high - low <= 1e-13 * high:
                 break
         self.record.add(high, state)
-        self._crest(high, state, self.record.last)
+        self._crest(high, state)
 
-    def _crest(self, time: float, state: Array, row: int) -> None:
-        """Take a maximum of the radius as a mark, unless a larger radius is too near."""
-        radius = float(state[eq.RADIUS])
-        half = 0.5 * self.bubble.period
-        self._drop_outgrown_mark(half)
-        larger = any(when > time - half and r > radius for when, r in self.crests)
-        self.crests.append((time, radius))
-        ends = len(self.marks) + 1 == self.wanted
-        if not larger and not (ends and self._outgrown(time, state)):
-            self.marks.append(row)
-            if len(self.marks) == 2 and self.warm == WARM_FRESH:
-                _, hottest = self._ahead(time, state)
-                self.early = hottest <= WEAK_AHEAD
-                self.warm = WARM_USED if self.early else WARM_FRESH
-
-    def _drop_outgrown_mark(self, half: float) -> None:
-        """Unmark the last maximum where the radius has grown larger within half a period."""
-        row, size = self.marks[-1], self.record.size
-        if row == 0:
-            return
-        times, radii = self.record.times[row:size], self.record.states[row:size, eq.RADIUS]
-        if radii[times <= times[0] + half].max() > radii[0] * (1.0 + LOOK_AHEAD):
-            self.marks.pop()
-
-    def _outgrown(self, time: float, state: Array) -> bool:
-        """Whether the radius grows larger within half a period."""
-        largest, _ = self._ahead(time, state)
-        return largest > state[eq.RADIUS] * (1.0 + LOOK_AHEAD)
-
-    def _ahead(self, time: float, state: Array) -> tuple[float, float]:
-        """Largest radius and temperature in the next half period, by a quick frozen look ahead."""
-        stop = time + 0.5 * self.bubble.period
-        ahead = state.copy()
-        step = 1e-4 * self.bubble.period
-        times, states = _scratch(len(state))
-        largest = hottest = 0.0
-        why = cold.MAXIMUM
-        while why == cold.MAXIMUM and time < stop:
-            why, taken, step = cold.integrate_frozen(
-                time, stop, step, ahead, np.inf, LOOK_AHEAD,
-                self.absolute * (LOOK_AHEAD / self.relative), *self.bubble.tables, times, states,
-            )  # fmt: skip
-            if taken == 0:
-                break
-            time = float(times[taken - 1])
-            largest = max(largest, float(states[:taken, eq.RADIUS].max()))
-            hottest = max(hottest, float(states[:taken, eq.TEMPERATURE].max()))
-        return largest, hottest
+    def _crest(self, time: float, state: Array) -> None:
+        if self.marks.crest(time, state) and len(self.marks.rows) == 2 and self.warm == WARM_FRESH:
+            _, hottest = self.marks.ahead(time, state)
+            self.early = hottest <= WEAK_AHEAD
+            self.warm = WARM_USED if self.early else WARM_FRESH
 
 
 NO_MAXIMUM = "no_maximum"
 STEP_LIMIT = "step_limit"
+TIME_LIMIT = "time_limit"
 FAILED = "integration_failed"
-LOOK_AHEAD = 1e-4  # tolerance of the look ahead, which only compares radii
 
 
 @njit(cache=True, error_model="numpy")
@@ -251,13 +207,3 @@ def _totals(state: Array, radicals: Array, count: int) -> tuple[float, float]:
         left += state[row]
         delivered += state[row + count]
     return left, delivered
-
-
-_buffers: dict[int, tuple[Array, Array]] = {}
-
-
-def _scratch(size: int) -> tuple[Array, Array]:
-    """Room for the explicit stage's steps, made once for each length of the state."""
-    if size not in _buffers:
-        _buffers[size] = np.empty(COLD_STEPS), np.empty((COLD_STEPS, size))
-    return _buffers[size]

@@ -12,13 +12,28 @@ from sonoyield.describe.gas import Array
 
 
 @dataclass(frozen=True, eq=False)
+class CellRecord:
+    """The resolved gas at each step: N cells of mass fractions ``faces`` (N+1,), centre first.
+
+    ``temperature`` (P, N) K, ``moles`` (P, N, K) mol; ``film`` (Q, M, L) mol/m3, concentrations in
+    the liquid film at the last Q steps.
+    """
+
+    faces: Array
+    temperature: Array
+    moles: Array
+    film: Array | None = None
+
+
+@dataclass(frozen=True, eq=False)
 class History:
     """Accepted steps of one bubble, from rest, and where its windows begin and end.
 
     ``times`` (N,) s and ``states`` (N, S) as laid out in ``equations``. ``marks`` are the rows of
     rest and of each main expansion maximum; ``windows`` pairs of rows from rest to the second
     main maximum, then from one to the next. ``stopped`` says why the run ended early, or is
-    empty. ``counters`` are the integrators' steps and evaluations.
+    empty. ``counters`` are the integrators' steps and evaluations. ``cells`` where the gas is resolved;
+    the states then hold the mole mean of its temperature.
     """
 
     bubble: Bubble
@@ -27,6 +42,7 @@ class History:
     marks: tuple[int, ...]
     stopped: str = ""
     counters: dict[str, int] = field(default_factory=dict)
+    cells: CellRecord | None = None
 
     @property
     def windows(self) -> tuple[tuple[int, int], ...]:

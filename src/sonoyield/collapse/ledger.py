@@ -11,8 +11,8 @@ from sonoyield.collapse import equations as eq
 from sonoyield.collapse.history import History
 from sonoyield.describe.gas import Array
 
-ELEMENT_LIMIT = 1e-9  # relative, of the well-mixed gas
-ENERGY_LIMIT = 1e-5  # of the work done
+ELEMENT_LIMIT, ENERGY_LIMIT = 1e-9, 1e-5  # of the well-mixed gas: relative, of the work done
+RESOLVED_ELEMENT_LIMIT, RESOLVED_ENERGY_LIMIT = 1e-6, 1e-4  # likewise of the resolved gas
 TRACE = 1e-12  # of all atoms: an element that is not there has no balance
 LEAST_WORK = 1e-9  # of p0 V0: less work than that does not tell closure from rounding
 
@@ -47,11 +47,14 @@ class Balance:
 
     element_error: float
     energy_error: float
+    element_limit: float = ELEMENT_LIMIT
+    energy_limit: float = ENERGY_LIMIT
 
     @property
     def closed(self) -> bool:
         """Whether elements and energy are within the limits of this model."""
-        return self.element_error <= ELEMENT_LIMIT and self.energy_error <= ENERGY_LIMIT
+        within = self.element_error <= self.element_limit
+        return within and self.energy_error <= self.energy_limit
 
 
 def energies(history: History, span: tuple[int, int]) -> Energies:
@@ -89,18 +92,22 @@ def balance(history: History) -> Balance:
         for one in (energies(history, span) for span in history.spans)
     )
     elements = max(_element_error(history, end) for _, end in history.spans)
-    return Balance(elements, float(np.nan_to_num(energy, nan=np.inf)))
+    energy = float(np.nan_to_num(energy, nan=np.inf))
+    if history.cells is None:
+        return Balance(elements, energy)
+    return Balance(elements, energy, RESOLVED_ELEMENT_LIMIT, RESOLVED_ENERGY_LIMIT)
 
 
 def _stored(history: History, row: int) -> float:
-    bubble = history.bubble
-    count = len(bubble.phase.species)
-    scratch = np.empty((eq.SCRATCH, count))
-    return float(
-        eq.stored_energy(
-            history.states[row], count, bubble.constants, bubble.phase.nasa, scratch
-        )
-    )
+    phase = history.bubble.phase
+    scratch = np.empty((eq.SCRATCH, len(phase.species)))
+    if history.cells is None:
+        parts = [(history.temperature[row], history.moles[row])]
+    else:
+        cells = history.cells
+        parts = list(zip(cells.temperature[row], cells.moles[row], strict=True))
+    gas = sum(eq.internal_energy(t, n, phase.nasa, scratch) for t, n in parts)
+    return eq.stored_energy(history.states[row], history.bubble.constants) + float(gas)
 
 
 def _element_error(history: History, row: int) -> float:

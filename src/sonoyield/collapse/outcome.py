@@ -5,9 +5,9 @@ from __future__ import annotations
 from dataclasses import dataclass
 from enum import StrEnum
 
-from sonoyield.collapse.follow import FAILED, NO_MAXIMUM, PATIENCE, STEP_LIMIT
+from sonoyield.collapse.follow import FAILED, NO_MAXIMUM, PATIENCE, STEP_LIMIT, TIME_LIMIT
 from sonoyield.collapse.history import History
-from sonoyield.collapse.ledger import ENERGY_LIMIT, Balance
+from sonoyield.collapse.ledger import Balance
 from sonoyield.collapse.thermo_range import thermo_range
 from sonoyield.collapse.yields import Collapse
 
@@ -23,12 +23,16 @@ class Code(StrEnum):
     NO_WINDOW = "no_window"
     LEDGER_OPEN = "ledger_open"
     STEP_LIMIT = "step_limit"
+    TIME_LIMIT = "time_limit"
     INTEGRATION_FAILED = "integration_failed"
 
     @property
     def has_numbers(self) -> bool:
         """Whether the numbers of such a run may be shown."""
-        return self not in (Code.LEDGER_OPEN, Code.STEP_LIMIT, Code.INTEGRATION_FAILED)
+        return self not in NUMBERLESS
+
+
+NUMBERLESS = (Code.LEDGER_OPEN, Code.STEP_LIMIT, Code.TIME_LIMIT, Code.INTEGRATION_FAILED)
 
 
 @dataclass(frozen=True)
@@ -47,6 +51,12 @@ def outcome_of(history: History, collapse: Collapse, balance: Balance) -> Outcom
             "The integration took its limit of steps before the window was complete; no number is "
             "given. Try a lower pressure or a larger bubble.",
         )
+    if history.stopped == TIME_LIMIT:
+        return Outcome(
+            Code.TIME_LIMIT,
+            "The integration took its limit of time before the window was complete; no number is "
+            "given. Try a lower pressure, a larger bubble or fewer cells.",
+        )
     if history.stopped == FAILED:
         return Outcome(
             Code.INTEGRATION_FAILED,
@@ -57,7 +67,7 @@ def outcome_of(history: History, collapse: Collapse, balance: Balance) -> Outcom
     if not balance.closed:
         return Outcome(
             Code.LEDGER_OPEN,
-            f"Energy closes to {balance.energy_error:.1e} of the work (limit {ENERGY_LIMIT:.0e}) "
+            f"Energy closes to {balance.energy_error:.1e} of the work (limit {balance.energy_limit:.0e}) "
             f"and elements to {balance.element_error:.1e}; no number is given.",
         )
     if history.stopped == NO_MAXIMUM and not history.windows and collapse.inertial:

@@ -23,7 +23,7 @@ class ChoiceReader:
     """Takes one of a few words; ``later`` maps words of later versions to their sentence."""
 
     options: tuple[str, ...]
-    later: Mapping[str, str] = field(default_factory=dict)
+    later: Mapping[str, str] = field(default_factory=dict, hash=False)
 
     def __call__(self, value: Any) -> str:
         if not isinstance(value, str):
@@ -61,7 +61,7 @@ class CountReader:
 
     low: int
     high: int
-    later: Mapping[str, str] = field(default_factory=dict)
+    later: Mapping[str, str] = field(default_factory=dict, hash=False)
 
     def __call__(self, value: Any) -> int:
         if isinstance(value, str) and value in self.later:

@@ -13,7 +13,6 @@ LATER_KEYS: dict[str, str] = {
     "bubbles.calibration": (
         "bubble numbers from a calibration are not in this version; give bubbles.number_density"
     ),
-    "liquid.scavengers": "scavengers in the liquid are not in this version",
     "dosimeter": "dosimeter readings are not in this version",
     "uncertainty": "uncertainty of the inputs is not in this version",
 }
@@ -24,7 +23,5 @@ LATER_FIELDS: dict[str, str] = {
 }
 
 LATER_RADIAL = {"gilmore": "the Gilmore equation is not in this version"}
-
-LATER_INTERIOR = {"resolved": "the resolved interior of the bubble is not in this version"}
 
 PERIODIC = "following the bubble to a periodic state is not in this version"

@@ -22,6 +22,7 @@ from sonoyield.describe.fields import (
     TextReader,
 )
 from sonoyield.describe.rules import check_rules
+from sonoyield.describe.scavengers import Scavenger, ScavengersReader
 from sonoyield.describe.translate import protocol_error
 
 LARGEST_FILE = 1_000_000  # bytes
@@ -34,7 +35,11 @@ LiquidKind = Annotated[str, BeforeValidator(ChoiceReader(("water", "saline")))]
 Mixture = Annotated[dict[str, float], BeforeValidator(MixtureReader())]
 FieldKind = Annotated[str, BeforeValidator(ChoiceReader(("uniform",), later.LATER_FIELDS))]
 Radial = Annotated[str, BeforeValidator(ChoiceReader(("keller_miksis",), later.LATER_RADIAL))]
-Interior = Annotated[str, BeforeValidator(ChoiceReader(("mixed",), later.LATER_INTERIOR))]
+Interior = Annotated[str, BeforeValidator(ChoiceReader(("resolved", "mixed")))]
+Cells = Annotated[int, BeforeValidator(CountReader(8, 80))]
+Wall = Annotated[str, BeforeValidator(ChoiceReader(("liquid_temperature", "thermal_layer")))]
+OxygenAtom = Annotated[str, BeforeValidator(ChoiceReader(("persists", "water")))]
+Scavengers = Annotated[dict[str, Scavenger], BeforeValidator(ScavengersReader())]
 Coupling = Annotated[str, BeforeValidator(ChoiceReader(("two_way", "one_way")))]
 Mechanism = Annotated[str, BeforeValidator(MechanismReader())]
 Collapses = Annotated[int, BeforeValidator(CountReader(1, 1000, {"periodic": later.PERIODIC}))]
@@ -73,13 +78,17 @@ class Schedule(Section):
 
 
 class Liquid(Section):
-    """Liquid: temperature in K, pressure in Pa, insonated volume in m3, salinity in kg/m3."""
+    """Liquid: temperature in K, pressure in Pa, insonated volume in m3, salinity in kg/m3.
+
+    ``scavengers`` of OH by name.
+    """
 
     kind: LiquidKind = "water"
     salinity: units.Salinity = 0.0
     temperature: units.Temperature
     ambient_pressure: units.AmbientPressure = units.ATMOSPHERE
     volume: units.Volume
+    scavengers: Scavengers = {}
 
     @model_validator(mode="before")
     @classmethod
@@ -149,10 +158,21 @@ class Accommodation(Section):
 
 
 class Model(Section):
-    """Choices of the bubble model."""
+    """Choices of the bubble model.
+
+    ``cells`` in the gas, None for the solver's own number. ``film`` follows what crossed into the
+    liquid; the mixed interior has none. ``wall``: held at the liquid's temperature, or warmed
+    through a thermal layer in the liquid. ``oxygen_atom``: what O(3P) does in cold water, which is
+    not known; it persists until it meets something, or reacts with the water.
+    """
 
     radial: Radial = "keller_miksis"
-    interior: Interior = "mixed"
+    interior: Interior = "resolved"
+    cells: Cells | None = None
+    film: Switch = True
+    wall: Wall = "liquid_temperature"
+    temperature_jump: Switch = False
+    oxygen_atom: OxygenAtom = "persists"
     coupling: Coupling = "two_way"
     mechanism: Mechanism = "auto"
     excluded_volume: Switch = True
@@ -160,6 +180,13 @@ class Model(Section):
     uptake: Switch = True
     accommodation: Accommodation = Accommodation()
     collapses: Collapses = 1
+
+    @model_validator(mode="before")
+    @classmethod
+    def _film_goes_with_resolved(cls, data: Any) -> Any:
+        if isinstance(data, Mapping) and data.get("interior") == "mixed":
+            return {"film": False, **data}
+        return data
 
 
 class Protocol(Section):

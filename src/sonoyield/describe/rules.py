@@ -11,10 +11,14 @@ from sonoyield.describe.liquid import liquid_state
 from sonoyield.describe.units import DIMENSIONS, format_quantity
 
 if TYPE_CHECKING:
-    from sonoyield.describe.protocol import Protocol
+    from sonoyield.describe.protocol import Model, Protocol
 
 LARGEST_GAS_SHARE = 0.1  # of the liquid's volume; above it bubbles do not act one by one
 MECHANISM = "model.mechanism"
+SCAVENGERS = "liquid.scavengers"
+RESOLVED = 'model.interior = "resolved"'
+# Keys of the model that say something of the resolved interior only.
+OF_THE_RESOLVED = ("cells", "wall", "temperature_jump", "oxygen_atom")
 ROUNDING = 1e-9  # equal times written in different units stay equal
 
 
@@ -27,6 +31,8 @@ def check_rules(protocol: Protocol) -> None:
     _check_boiling(protocol)
     _check_filling(protocol)
     _check_mechanism(protocol)
+    _check_interior(protocol.model)
+    _check_scavengers(protocol)
 
 
 def _check_times(protocol: Protocol) -> None:
@@ -87,6 +93,45 @@ def _check_mechanism(protocol: Protocol) -> None:
         phase_for(mechanism, mixture)
     except RefusalError as error:
         raise RefusalError(error.problem, error.allowed, MECHANISM) from None
+
+
+def _check_interior(model: Model) -> None:
+    if model.interior == "resolved":
+        _check_resolved(model)
+        return
+    for key in OF_THE_RESOLVED:
+        if key in model.model_fields_set:
+            problem = "the mixed interior has no such choice"
+            raise RefusalError(problem, f"with {RESOLVED} only", f"model.{key}")
+    if model.film:
+        problem = "the mixed interior has no film of liquid around it"
+        raise RefusalError(problem, f"false, or true with {RESOLVED}", "model.film")
+
+
+def _check_resolved(model: Model) -> None:
+    if model.coupling == "one_way":
+        unsaid = "" if "interior" in model.model_fields_set else ", which is the default,"
+        raise RefusalError(
+            f"a resolved interior{unsaid} is always coupled both ways",
+            '"two_way", or "one_way" with model.interior = "mixed"',
+            "model.coupling",
+        )
+    if not model.film and "oxygen_atom" in model.model_fields_set:
+        problem = "says what oxygen atoms do in the film, and there is none"
+        raise RefusalError(problem, "with model.film = true only", "model.oxygen_atom")
+
+
+def _check_scavengers(protocol: Protocol) -> None:
+    model = protocol.model
+    needed = {
+        RESOLVED: model.interior == "resolved",
+        "model.film = true": model.film,
+        "model.uptake = true": model.uptake,
+    }
+    lacking = [words for words, met in needed.items() if not met]
+    if protocol.liquid.scavengers and lacking:
+        problem = "scavengers act in the film of liquid, on what crosses the wall"
+        raise RefusalError(problem, f"with {' and '.join(lacking)} only", SCAVENGERS)
 
 
 def _time(seconds: float) -> str:

@@ -107,9 +107,13 @@ def _model_of(info: FieldInfo) -> type[BaseModel] | None:
 
 
 def _value_at(data: Any, path: tuple[str, ...]) -> object:
-    here: Any = data
-    for name in path:
-        if not isinstance(here, Mapping) or name not in here:
-            return MISSING
-        here = here[name]
-    return here
+    if not path:
+        return data
+    if not isinstance(data, Mapping):
+        return MISSING
+    for end in range(1, len(path) + 1):  # a name may itself hold dots
+        name = ".".join(path[:end])
+        found = _value_at(data[name], path[end:]) if name in data else MISSING
+        if found is not MISSING:
+            return found
+    return MISSING

@@ -64,6 +64,16 @@ DIMENSIONS: dict[str, Dimension] = {
         (("us", 1e-6), ("ms", 1e-3), ("s", 1.0), ("min", 60.0), ("h", 3600.0), ("day", 86400.0)),
     ),
     "salinity": Dimension("a mass per volume", "kg/m^3", (("g/L", 1.0),)),
+    "concentration": Dimension(
+        "an amount per volume",
+        "mol/m^3",
+        (("pmol/L", 1e-9), ("nmol/L", 1e-6), ("umol/L", 1e-3), ("mmol/L", 1.0), ("mol/L", 1e3)),
+        slips=(1e3,),
+    ),
+    "rate_constant": Dimension(
+        "a second-order rate constant", "m^3/mol/s", (("L/mol/s", 1e-3),), slips=(1e3,)
+    ),
+    "diffusivity": Dimension("a diffusivity", "m^2/s", (("m^2/s", 1.0),), slips=(1e4,)),
 }
 
 
@@ -142,6 +152,9 @@ READERS: dict[str, QuantityReader] = {
     "number_density": QuantityReader("number_density", 1.0, 1e18, "1e9 / m^3"),
     "time": QuantityReader("time", 1e-6, 30 * 86400.0, "10 min"),
     "salinity": QuantityReader("salinity", 0.0, 60.0, "9 g/L"),
+    "concentration": QuantityReader("concentration", 1e-9, 1e4, "2 mmol/L"),
+    "rate_constant": QuantityReader("rate_constant", 1.0, 1e8, "4e9 L/mol/s"),
+    "diffusivity": QuantityReader("diffusivity", 1e-12, 1e-7, "1e-9 m^2/s"),
 }
 
 Frequency = Annotated[float, BeforeValidator(READERS["frequency"])]

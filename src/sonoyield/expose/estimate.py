@@ -108,7 +108,7 @@ def bubble_of(protocol: Protocol, liquid: LiquidState) -> Bubble:
     """The protocol's bubble at rest."""
     model = protocol.model
     phase = phase_for(model.mechanism, protocol.gas.mixture)
-    shares = {"water": model.accommodation.of("H2O")}
+    shares = {"water": model.accommodation.water, "radicals": model.accommodation.radicals}
     shares |= {k: model.accommodation.of(k) for k in ABSORBED if k in phase.species}
     return Bubble(
         phase=phase,

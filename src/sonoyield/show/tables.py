@@ -112,6 +112,8 @@ def _accommodation(bubble: Bubble) -> str:
     """Values by species, those that share one together."""
     names: dict[float, list[str]] = {}
     for name, value in bubble.accommodation.items():
+        if name == "radicals":  # each is named
+            continue
         names.setdefault(value, []).append(name)
     if len(names) == 1:
         return f"{next(iter(names)):g} for water and all that is taken up"

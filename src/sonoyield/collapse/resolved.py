@@ -1,0 +1,199 @@
+"""Follow a bubble whose gas is resolved from centre to wall, with the liquid film around it.
+
+While the gas is cold and fresh only what is there at rest is carried and nothing reacts; from
+``WARM`` on all species, reactions and the film are.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from time import monotonic
+
+import numpy as np
+
+from sonoyield.collapse import cells as c
+from sonoyield.collapse import cells_bdf as bdf
+from sonoyield.collapse import equations as eq
+from sonoyield.collapse.aqueous import FILM_OF_GAS, AqueousChemistry
+from sonoyield.collapse.bubble import Bubble
+from sonoyield.collapse.exchange import CROSSES, SURFACE
+from sonoyield.collapse.film_grid import film_edges
+from sonoyield.collapse.follow import FAILED, NO_MAXIMUM, PATIENCE, STEP_LIMIT, TIME_LIMIT, Accuracy, at_rest
+from sonoyield.collapse.history import CellRecord, History, Recorder
+from sonoyield.collapse.ledger import balance
+from sonoyield.collapse.marks import Marks
+from sonoyield.collapse.stage import Stage
+from sonoyield.describe.gas import Array
+
+CELLS = 20
+NARROWING = 0.85  # thickness of a cell over that of the one inside it, at rest
+WARM = 1000.0  # K of the hottest cell, above which gas may react
+COUNTERS = ("steps", "evaluations", "jacobians", "factorisations", "stages")
+FIRST_STEP = 1e-5  # of the period
+CHUNK = 256  # steps between looks at the clock
+FILM_CELLS = 16
+
+
+def follow_resolved(
+    bubble: Bubble,
+    collapses: int = 1,
+    accuracy: Accuracy | None = None,
+    cells: int = CELLS,
+    chemistry: AqueousChemistry | None = None,
+) -> History:
+    """Integrate from rest until ``collapses`` windows are complete, as ``follow`` does.
+
+    ``chemistry`` of the liquid film; without it what crosses never comes back.
+    """
+    accuracy = accuracy or Accuracy()
+    if bubble.pressure_amplitude == 0.0:
+        return at_rest(bubble)
+    history = _Run(bubble, collapses, accuracy, cells, chemistry).complete()
+    for _ in range(accuracy.tighten):
+        if history.stopped in (STEP_LIMIT, FAILED, TIME_LIMIT) or balance(history).closed:
+            break
+        accuracy = replace(accuracy, relative=0.1 * accuracy.relative)
+        history = _Run(bubble, collapses, accuracy, cells, chemistry).complete()
+    return history
+
+
+def mass_fractions(cells: int, narrowing: float = NARROWING) -> Array:
+    """Mass inside each face over that of the bubble (cells + 1,): shells thinner to the wall."""
+    thickness = narrowing ** np.arange(cells)
+    radii = np.concatenate([[0.0], np.cumsum(thickness) / thickness.sum()])
+    return radii**3
+
+
+class _Run:
+    def __init__(
+        self,
+        bubble: Bubble,
+        collapses: int,
+        accuracy: Accuracy,
+        cells: int,
+        chemistry: AqueousChemistry | None,
+    ) -> None:
+        self.bubble, self.accuracy, self.chemistry = bubble, accuracy, chemistry
+        self.faces = mass_fractions(cells)
+        self.most = accuracy.steps * collapses
+        self.began = monotonic()
+        self.record = Recorder(bubble.at_rest())
+        self.marks = Marks(bubble, self.record, collapses + 2)
+        self.moles = [np.outer(np.diff(self.faces), bubble.moles)[None]]
+        self.temperatures = [np.full((1, cells), bubble.liquid.temperature)]
+        self.concentrations: list[Array] = []
+        self.counters = dict.fromkeys(COUNTERS, 0)
+
+    def complete(self) -> History:
+        fresh = np.flatnonzero(self.bubble.moles > 0.0)
+        water = self.bubble.phase.index("H2O")
+        stage = Stage(
+            self.bubble, sorted({*fresh, water}), self.faces, False, self.bubble.species, NO_FILM
+        )
+        stopped = self._carry(stage, self._beginning(stage))
+        if not stopped and not self.marks.complete:
+            film, table = self._film()
+            hot = Stage(
+                self.bubble, range(len(self.bubble.moles)), self.faces, True, table, film
+            )
+            crossed = np.zeros(len(self.bubble.moles))
+            crossed[stage.kept] = stage.state[c.CROSSED : stage.start]
+            state = hot.compose(
+                stage.state[: c.CROSSED], crossed, self.moles[-1][-1], self.temperatures[-1][-1]
+            )
+            hot.time = stage.time
+            stopped = self._carry(hot, state)
+        return self._history(stopped)
+
+    def _beginning(self, stage: Stage) -> Array:
+        head = np.zeros(c.CROSSED)
+        head[c.RADIUS] = self.bubble.radius
+        nothing = np.zeros(len(self.bubble.moles))
+        return stage.compose(head, nothing, self.moles[0][0], self.temperatures[0][0])
+
+    def _carry(self, stage: Stage, state: Array) -> str:
+        """Step until all marks are there, fresh gas is warm, or the run must stop."""
+        stage.begin(stage.time, FIRST_STEP * self.bubble.period, state)
+        warm = np.inf if stage.gas.reactive else WARM
+        stopped, began = "", self.counters["steps"]
+        self.counters["stages"] += 1
+        while not stopped and not self.marks.complete:
+            deadline = self.marks.latest + PATIENCE * self.bubble.period
+            why, times, states = stage.advance(deadline, self.accuracy.relative, warm, CHUNK)
+            self._keep(stage, times, states, why == bdf.MAXIMUM)
+            if why == bdf.WARM:
+                break
+            if why == bdf.FAILED:
+                stopped = FAILED
+            elif why == bdf.END:
+                stopped = NO_MAXIMUM
+            elif began + stage.counts["steps"] >= self.most:
+                stopped = STEP_LIMIT
+            elif monotonic() - self.began > self.accuracy.seconds:
+                stopped = TIME_LIMIT
+        for name, count in stage.counts.items():
+            self.counters[name] += count
+        return stopped
+
+    def _keep(self, stage: Stage, times: Array, states: Array, crest: bool) -> None:
+        """Record the rows of a stretch; a maximum is the last but one."""
+        for row, (time, state) in enumerate(zip(times, states, strict=True)):
+            self.record.add(float(time), stage.summary(state))
+            if crest and row == len(times) - 2:
+                self.marks.crest(float(time), self.record.states[self.record.last])
+                if self.marks.complete:
+                    states = states[: row + 1]
+                    break
+        self.moles.append(stage.moles(states))
+        self.temperatures.append(stage.temperatures(states).copy())
+        if len(stage.film.edges) > 1:
+            self.concentrations.append(stage.concentrations(states).copy())
+
+    def _film(self) -> tuple[c.Film, Array]:
+        """The film, and the table of species in which what it follows crosses."""
+        table = self.bubble.species
+        if self.chemistry is None:
+            return NO_FILM, table
+        table = table.copy()
+        species, chemistry = self.bubble.phase.species, self.chemistry
+        index = np.full(len(chemistry.species), -1, dtype=np.int64)
+        for gas, dissolved in FILM_OF_GAS.items():
+            if gas in species and dissolved in chemistry.species:
+                k = species.index(gas)
+                index[chemistry.index(dissolved)] = k
+                if table[k, CROSSES] == 0.0:
+                    table[k, CROSSES] = 1.0
+                    table[k, SURFACE] = self.bubble.surface_resistance(gas)
+        edges = film_edges(0.2 * self.bubble.radius, self.bubble.radius, FILM_CELLS)
+        film = c.Film(
+            edges, chemistry.diffusivity, chemistry.henry, chemistry.bulk, index, chemistry.tables
+        )
+        return film, table
+
+    def _history(self, stopped: str) -> History:
+        times, states = self.record.arrays()
+        record = CellRecord(
+            self.faces,
+            np.concatenate(self.temperatures),
+            np.concatenate(self.moles),
+            np.concatenate(self.concentrations) if self.concentrations else None,
+        )
+        return History(
+            self.bubble, times, states, tuple(self.marks.rows), stopped, dict(self.counters), record
+        )
+
+
+NO_FILM = c.Film(
+    np.zeros(1),
+    np.zeros(0),
+    np.zeros(0),
+    np.zeros(0),
+    np.zeros(0, dtype=np.int64),
+    (
+        np.zeros(0),
+        np.zeros((0, 2), dtype=np.int64),
+        np.zeros(1, dtype=np.int64),
+        np.zeros(0, dtype=np.int64),
+        np.zeros(0),
+    ),
+)
