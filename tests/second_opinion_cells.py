@@ -26,6 +26,7 @@ R, U, P, N = range(4)  # state: radius m, speed m/s, pressure / ambient, then th
 FINE = 0.9  # of the grid's grading towards the wall
 WALL_ROUNDS = 8  # Newton rounds for the mole fractions at the wall
 TRIAL = 1e-3  # share of a cell that stays free of covolume in a trial state
+NOISE = 1e-10  # mole fraction
 NUDGE = 1e-7  # relative, of finite differences
 
 
@@ -150,10 +151,14 @@ class Cells(mixed._Bubble):
         return conductivity, others / resistance * (t**1.5 / pressure)[:, None]
 
     def production(self, t: Array, n: Array, volume: Array, pressure: float) -> Array:
-        """Production (mol/s) in each cell at its true density."""
+        """Production (mol/s) in each cell at its true density.
+
+        Negative traces react no faster than noise does: beside radicals they let those multiply.
+        """
         forward = np.empty((len(t), self.net.shape[1]))
         reverse = np.empty_like(forward)
-        density, x = n @ self.mass / volume, n / n.sum(axis=1)[:, None]
+        density = n @ self.mass / volume
+        x = np.maximum(n / n.sum(axis=1)[:, None], -NOISE)
         for i in range(len(t)):
             self.gas.set_unnormalized_mole_fractions(x[i])
             self.gas.TD = t[i], density[i]
@@ -187,10 +192,10 @@ class Cells(mixed._Bubble):
     def through_faces(self, radius: float, pressure: float, t: Array, x: Array) -> Passing:
         """Gas at the faces, and what diffuses through them and through the wall.
 
-        Between cells all is interpolated; at the wall taken halfway to the liquid's temperature.
+        Between cells temperature is interpolated; at the wall taken halfway to the liquid's.
         """
         liquid, b = self.case.temperature, self.covolume
-        x_face = x[:-1] + self.outer[:, None] * np.diff(x, axis=0)
+        x_face = self.between(x)
         t_face = t[:-1] + self.outer * np.diff(t)
         t_all = np.append(t_face, 0.5 * (t[-1] + liquid))
         x_all = np.concatenate([x_face, x[-1:]])
@@ -214,6 +219,16 @@ class Cells(mixed._Bubble):
         face = density[:-1, None] * x_face
         brought = (face * enthalpy[:-1]).sum(axis=1)
         return Passing(face, brought, diffused, warmth, inflow[self.crossing], heat)
+
+    def between(self, x: Array) -> Array:
+        """Mole fractions at the faces between cells: harmonic means, weighted by distance.
+
+        Of second order as the arithmetic ones, but no cell can lose more of a trace than it has.
+        """
+        outer = self.outer[:, None]
+        both, mean = x[:-1] * x[1:], (1.0 - outer) * x[1:] + outer * x[:-1]
+        face = np.divide(both, mean, out=np.zeros_like(both), where=both > 0.0)
+        return np.asarray(face / face.sum(axis=1)[:, None])
 
     def local(self, y: Array, base: Array | None = None, changed: Any = slice(None)) -> Local:
         """All but the flow itself; only `changed` cells react anew, `base` (N, K) else."""

@@ -29,7 +29,7 @@ def resident() -> int:
 @pytest.mark.skipif(not STATUS.exists(), reason="reads /proc")
 @pytest.mark.parametrize(("coupling", "runs", "collapses"), CASES)
 def test_flat(coupling: str, runs: int, collapses: int, capfd: pytest.CaptureFixture[str]) -> None:
-    model = {"coupling": coupling, "collapses": collapses}
+    model = {"interior": "mixed", "coupling": coupling, "collapses": collapses}
     protocol = Protocol.from_dict(PROTOCOL | {"model": model})
     for _ in range(min(runs, 20)):
         estimate(protocol).as_dict()

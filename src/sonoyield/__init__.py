@@ -13,12 +13,13 @@ from sonoyield._version import __version__
 if TYPE_CHECKING:
     from sonoyield.describe.errors import ProtocolError
     from sonoyield.describe.protocol import Protocol
-    from sonoyield.expose.estimate import Estimate, estimate
+    from sonoyield.expose.estimate import estimate
+    from sonoyield.expose.result import Estimate
 
 __all__ = ["Estimate", "Protocol", "ProtocolError", "__version__", "estimate"]
 
 _HOMES = {
-    "Estimate": "sonoyield.expose.estimate",
+    "Estimate": "sonoyield.expose.result",
     "Protocol": "sonoyield.describe.protocol",
     "ProtocolError": "sonoyield.describe.errors",
     "estimate": "sonoyield.expose.estimate",

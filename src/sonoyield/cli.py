@@ -14,13 +14,14 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from sonoyield._version import __version__
+from sonoyield.targets import Targets, check_targets, refuse, refuse_resolved_only, write_targets
 
 if TYPE_CHECKING:
     from sonoyield.decide.explain import Explanation
     from sonoyield.describe.protocol import Protocol
-    from sonoyield.expose.estimate import Estimate
+    from sonoyield.expose.result import Estimate
 
-BAD_INPUT, NUMERICS, INTERRUPTED = 2, 3, 130
+NUMERICS, INTERRUPTED = 3, 130
 
 app = typer.Typer(
     add_completion=False,
@@ -45,7 +46,30 @@ HistoryPath = Annotated[
         metavar="PATH", readable=False, help="Write R, U, T, p, composition: .csv or .parquet."
     ),
 ]
-Both = Annotated[bool, typer.Option("--both", help="Run both couplings; report the difference.")]
+Profile = Annotated[
+    Path | None,
+    typer.Option(
+        metavar="PATH", readable=False, help="Write the gas from centre to wall at the peak."
+    ),
+]
+Chart = Annotated[
+    Path | None,
+    typer.Option(
+        metavar="PATH", readable=False, help="Draw temperature and OH around the peak: .png, .svg."
+    ),
+]
+LiquidChart = Annotated[
+    Path | None,
+    typer.Option(
+        metavar="PATH", readable=False, help="Draw where OH goes in the liquid: .png or .svg."
+    ),
+]
+Fast = Annotated[
+    bool, typer.Option("--fast", help="The well-mixed gas only, with its known error.")
+]
+Both = Annotated[
+    bool, typer.Option("--both", help="Run both couplings of the mixed gas; report the difference.")
+]
 Quiet = Annotated[bool, typer.Option("--quiet", help="No progress and no warnings on stderr.")]
 
 
@@ -87,18 +111,25 @@ def estimate(
     json: AsJson = False,
     out: Out = None,
     history: HistoryPath = None,
+    profile: Profile = None,
+    chart: Chart = None,
+    liquid_chart: LiquidChart = None,
+    fast: Fast = False,
     both: Both = False,
     quiet: Quiet = False,
 ) -> None:
     """Radicals per collapse and per exposure of one protocol."""
-    _check_targets(out, history)
+    targets = Targets(out, history, profile, chart, liquid_chart)
+    check_targets(targets)
     with _interruptible():
         protocol = _load(file, quiet)
+        if fast or protocol.model.interior == "mixed":
+            refuse_resolved_only(targets)
         from sonoyield.expose.estimate import estimate as run
 
         with _left_at_once():
-            result = run(protocol, both=both)
-        _show(result, json, out, history)
+            result = run(protocol, both=both, fast=fast)
+        _show(result, json, targets)
     _finish(result, result.warnings, json, quiet)
 
 
@@ -111,7 +142,7 @@ def explain(
     quiet: Quiet = False,
 ) -> None:
     """Reactions that make and destroy what is delivered, and the rates that matter."""
-    _check_targets(out, None)
+    check_targets(Targets(out))
     with _interruptible():
         protocol = _load(file, quiet)
         from sonoyield.decide.explain import SpeciesError
@@ -121,7 +152,7 @@ def explain(
             with _left_at_once():
                 result = run(protocol, tuple(dict.fromkeys(species or ("OH", "H2O2"))))
         except SpeciesError as error:
-            _refuse(f"--species {error}")
+            refuse(f"--species {error}")
         _show_explanation(result, json, out)
     _finish(result.estimate, result.warnings, json, quiet)
 
@@ -133,7 +164,7 @@ def _load(file: Path, quiet: bool) -> Protocol:
     try:
         protocol = Protocol.load(file)
     except ProtocolError as error:
-        _refuse(str(error))
+        refuse(str(error))
     if not quiet:
         _tell_first_compilation()
     return protocol
@@ -189,7 +220,7 @@ def _show_explanation(result: Explanation, json: bool, out: Path | None) -> None
         elif out is not None:
             write_rows(result.rows(), out)
     except OSError as error:
-        _refuse(f"{error.filename or out}: cannot be written: {error.strerror}")
+        refuse(f"{error.filename or out}: cannot be written: {error.strerror}")
     if json:
         typer.echo(to_json(result.as_dict()))
     elif out is None:
@@ -200,46 +231,18 @@ def _show_explanation(result: Explanation, json: bool, out: Path | None) -> None
         print_explanation(result, Console(highlight=False))
 
 
-def _show(result: Estimate, json: bool, out: Path | None, history: Path | None) -> None:
-    from sonoyield.show.files import to_json, write_history, write_result
+def _show(result: Estimate, json: bool, targets: Targets) -> None:
+    from sonoyield.show.files import to_json
 
-    try:
-        if out is not None:
-            write_result(result.as_dict(), out)
-        if history is not None:
-            write_history(result.history, history)
-    except OSError as error:
-        _refuse(f"{error.filename}: cannot be written: {error.strerror}")
+    write_targets(result, targets)
     if json:
         typer.echo(to_json(result.as_dict()))
-    elif out is None:
+    elif targets.out is None:
         from rich.console import Console
 
         from sonoyield.show.tables import print_estimate
 
         print_estimate(result, Console(highlight=False))
-
-
-def _check_targets(out: Path | None, history: Path | None) -> None:
-    from sonoyield.show.files import HISTORY_SUFFIXES, RESULT_SUFFIXES
-
-    _check_target(out, "--out", RESULT_SUFFIXES)
-    _check_target(history, "--history", HISTORY_SUFFIXES)
-    if out is not None and history is not None and out.absolute() == history.absolute():
-        _refuse(f"--history {history}: is the path of --out too; allowed another path")
-
-
-def _check_target(path: Path | None, option: str, suffixes: tuple[str, ...]) -> None:
-    if path is None:
-        return
-    if path.suffix not in suffixes:
-        _refuse(f"{option} {path}: suffix {path.suffix!r}; allowed {', '.join(suffixes)}")
-    if not path.parent.is_dir():
-        _refuse(f"{option} {path}: there is no folder {path.parent}")
-    if path.is_dir():
-        _refuse(f"{option} {path}: is a folder")
-    if not os.access(path.parent, os.W_OK):
-        _refuse(f"{option} {path}: the folder {path.parent} may not be written to")
 
 
 def _tell_first_compilation() -> None:
@@ -248,11 +251,6 @@ def _tell_first_compilation() -> None:
 
     if not is_cached():
         _say("compiling the bubble equations for this machine, once (up to half a minute) ...")
-
-
-def _refuse(message: str) -> None:
-    _say(f"error: {message}")
-    raise typer.Exit(BAD_INPUT)
 
 
 def _say(message: str) -> None:

@@ -9,6 +9,7 @@ import json
 from pathlib import Path
 
 import pytest
+import resolved_rows
 import run
 
 import second_opinion
@@ -25,6 +26,19 @@ def test_runs_and_reports(tmp_path: Path, capsys: pytest.CaptureFixture[str]) ->
     assert row["case"] == name
     assert row["product_temperature"] == pytest.approx(row["baseline_temperature"], rel=2e-3)
     assert row["product_oh"] == pytest.approx(row["baseline_oh"], rel=0.02)
+
+
+@pytest.mark.parametrize("film", [False, True])
+def test_says_where_the_time_of_the_resolved_gas_goes(film: bool) -> None:
+    row = run.measure_resolved(run.RESOLVED[0], film, 1)
+    assert row.film is film
+    assert min(row.to_baseline, row.to_mixed) > 0.0
+    shares = (row.rates_share, row.jacobian_share, row.factorisation_share, row.solution_share)
+    assert min(shares) > 0.0
+    assert row.evaluations > row.steps > row.factorisations > row.jacobians > 0
+    assert row.energy_error < 1e-4
+    printed = resolved_rows.table([row])
+    assert all(label in printed for label in resolved_rows.LINES)
 
 
 @pytest.mark.parametrize("name", run.CASES)

@@ -18,8 +18,10 @@ def place(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
 
 def test_a_fresh_place_is_stamped_and_kept(place: Path) -> None:
     compiled.discard_stale()
-    built = place / "cold.integrate_frozen-1.py311.1.nbc"
-    built.write_bytes(b"compiled")
+    for name in compiled.OUTERMOST:
+        assert not compiled.is_cached()
+        built = place / f"{name}-1.py311.1.nbc"
+        built.write_bytes(b"compiled")
     compiled.discard_stale()
     assert built.is_file()
     assert compiled.is_cached()

@@ -10,7 +10,7 @@ import pytest
 from sonoyield import Protocol, estimate
 from sonoyield.collapse.ionisation import ionisation_temperature
 from sonoyield.collapse.outcome import Code
-from sonoyield.expose.estimate import Estimate
+from sonoyield.expose.result import Estimate
 
 
 @cache

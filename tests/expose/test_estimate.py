@@ -102,7 +102,7 @@ def test_no_sound_no_work() -> None:
 
 
 def test_the_other_coupling_is_named() -> None:
-    one = estimate(protocol(model={"coupling": "one_way"}), both=True)
+    one = estimate(protocol(model={"coupling": "one_way", "interior": "mixed"}), both=True)
     assert one.coupling_difference is not None
     assert one.coupling_difference["other"] == "two_way"
 
@@ -118,4 +118,4 @@ def test_inputs_hold_every_default(result: Estimate) -> None:
     assert inputs["model"]["coupling"] == "two_way"
     assert inputs["liquid"]["ambient_pressure"] == 101325.0
     assert inputs["liquid_properties"]["density"] == pytest.approx(997.05, rel=1e-4)  # IAPWS-95
-    assert set(inputs["accommodation"]) == {"water", "OH", "H", "O", "HO2", "H2O2", "O3"}
+    assert set(inputs["accommodation"]) == {"water", "radicals", "OH", "H", "O", "HO2", "H2O2", "O3"}

@@ -100,6 +100,7 @@ def models(draw: st.DrawFn) -> dict[str, Any]:
     """Both couplings, every switch, some accommodation coefficients, one to three collapses."""
     shares = st.dictionaries(st.sampled_from(ACCOMMODATION), st.floats(0.001, 1.0), max_size=4)
     return {
+        "interior": "mixed",
         "coupling": draw(st.sampled_from(["two_way", "one_way"])),
         "collapses": draw(st.sampled_from([1, 1, 2, 3])),
         "accommodation": draw(shares),

@@ -12,7 +12,7 @@ import pytest
 
 from sonoyield import Protocol, estimate
 from sonoyield.collapse import equations as eq
-from sonoyield.expose.estimate import Estimate
+from sonoyield.expose.result import Estimate
 from sonoyield.show import files
 
 TABLE: dict[str, Any] = {

@@ -2,7 +2,9 @@
 
 The numerical differentiation formulas of Shampine and Reichelt 1997 (SIAM J. Sci. Comput. 18, 1),
 orders 1 to 5 in backward differences. The equations of a step are solved by ``cells_newton``
-directly, so that what they conserve is conserved, and a run stays in compiled code.
+and
+``cells_elimination`` directly, so that what they conserve is conserved, and a run stays in compiled
+code.
 """
 
 from __future__ import annotations
@@ -11,11 +13,14 @@ from math import isfinite, sqrt
 from typing import NamedTuple
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
 from sonoyield.collapse import cells as c
+from sonoyield.collapse import cells_elimination as elimination
 from sonoyield.collapse import cells_newton as newton
+from sonoyield.collapse import cells_rates
+from sonoyield.collapse.kernel import address_of, call, inner, making, outer
+from sonoyield.collapse.small_matrices import copy
 from sonoyield.describe.gas import Array
 
 END, MAXIMUM, WARM, FULL, FAILED = range(5)  # why a stretch ended
@@ -44,13 +49,37 @@ def memory_for(size: int) -> Memory:
     )  # fmt: skip
 
 
-@njit(cache=True, error_model="numpy")
+class Calls(NamedTuple):
+    """Addresses of what a step calls."""
+
+    rates: int
+    evaluate: int
+    factorise: int
+    solve: int
+    substitute: int
+
+
+def calls_for(
+    state: Array, gas: c.Gas, film: c.Film, work: c.Work, blocks: newton.Blocks
+) -> Calls:
+    """What a step calls, compiled if need be, for arguments of these types."""
+    rates = address_of(cells_rates.rates, 0.0, state, gas, film, work, state)
+    evaluate = address_of(newton.evaluate, 0.0, state, gas, film, work, blocks, rates, state)
+    known, row = (0.0, blocks, film.gas_index), state
+    substitute = address_of(elimination.substitute, *known, row, row)
+    factorise = address_of(elimination.factorise, *known, substitute)
+    solve = address_of(elimination.solve, *known, substitute, row, row)
+    return Calls(rates, evaluate, factorise, solve, substitute)
+
+
+@outer
 def begin(
-    time: float, step: float, state: Array, gas: c.Gas, film: c.Film, memory: Memory, work: c.Work
-) -> None:
+    time: float, step: float, state: Array, gas: c.Gas, film: c.Film, memory: Memory, work: c.Work,
+    calls: Calls,
+) -> None:  # fmt: skip
     """Start from ``state`` at order 1 with a first ``step`` (s)."""
     d, rates = memory.differences, memory.room[0]
-    c.rates(time, state, gas, film, work, rates)
+    call(calls.rates, (time, state, gas, film, work, rates))
     d[:] = 0.0
     for a in range(state.size):
         d[0, a], d[1, a] = state[a], step * rates[a]
@@ -60,10 +89,10 @@ def begin(
     memory.counts[EVALUATIONS] += 1
 
 
-@njit(cache=True, error_model="numpy")
+@outer
 def integrate(
     stop: float, relative: float, floors: Array, warm: float, gas: c.Gas, film: c.Film,
-    memory: Memory, work: c.Work, blocks: newton.Blocks, times: Array, states: Array,
+    memory: Memory, work: c.Work, blocks: newton.Blocks, calls: Calls, times: Array, states: Array,
 ) -> tuple[int, int]:  # fmt: skip
     """Step towards ``stop`` (s); returns why it ended and how many rows it recorded.
 
@@ -74,16 +103,16 @@ def integrate(
     taken = 0
     while taken + 2 <= times.size:
         before = memory.differences[0, c.SPEED]
-        if not _step(relative, floors, gas, film, memory, work, blocks):
+        if not _step(relative, floors, gas, film, memory, work, blocks, calls):
             return FAILED, taken
         crest = before > 0.0 and memory.differences[0, c.SPEED] <= 0.0
         if crest:
             times[taken] = _between(memory, states[taken])
             taken += 1
         times[taken] = memory.numbers[TIME]
-        states[taken] = memory.differences[0]
+        copy(memory.differences[0], states[taken])
         taken += 1
-        _next_step(relative, floors, memory, work.fractions.shape)
+        _next_step(memory, work.fractions.shape)
         if crest:
             return MAXIMUM, taken
         if _hottest(states[taken - 1], work.fractions.shape) > warm:
@@ -93,17 +122,17 @@ def integrate(
     return FULL, taken
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _step(
     relative: float, floors: Array, gas: c.Gas, film: c.Film, memory: Memory, work: c.Work,
-    blocks: newton.Blocks,
+    blocks: newton.Blocks, calls: Calls,
 ) -> bool:  # fmt: skip
     """Take one step, shortening it until it succeeds; whether it did."""
     counts, numbers = memory.counts, memory.numbers
     for _ in range(PATIENCE):
         order = counts[ORDER]
         _predict(order, relative, floors, memory)
-        turns = _newton(gas, film, memory, work, blocks)
+        turns = _newton(gas, film, memory, work, blocks, calls)
         if turns == 0:
             if counts[FRESH] == 0:
                 counts[FACTORED] = 0
@@ -126,7 +155,7 @@ def _step(
     return False
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _predict(order: int, relative: float, floors: Array, memory: Memory) -> None:
     """Prediction in room 1, history term in room 2, weights of errors in room 5."""
     d, room = memory.differences, memory.room
@@ -140,33 +169,38 @@ def _predict(order: int, relative: float, floors: Array, memory: Memory) -> None
         room[5, a] = 1.0 / (relative * (floors[a] + abs(total)))
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _newton(
-    gas: c.Gas, film: c.Film, memory: Memory, work: c.Work, blocks: newton.Blocks
+    gas: c.Gas, film: c.Film, memory: Memory, work: c.Work, blocks: newton.Blocks, calls: Calls
 ) -> int:
     """Solve for the change from the prediction (room 3); iterations taken, 0 for failure."""
     room, counts, numbers = memory.room, memory.counts, memory.numbers
     state, change, weights = room[4], room[3], room[5]
     scaled = numbers[STEP] / ALPHA[counts[ORDER]]
     time = numbers[TIME] + numbers[STEP]
-    state[:] = room[1]
+    copy(room[1], state)
     change[:] = 0.0
     if counts[FACTORED] == 0:
         if counts[AGE] >= OLD:
-            newton.evaluate(time, state, gas, film, work, blocks, room[0])
+            call(calls.evaluate, (time, state, gas, film, work, blocks, calls.rates, room[0]))
             counts[JACOBIANS] += 1
             counts[FRESH], counts[AGE] = 1, 0
-        newton.factorise(scaled, blocks, film.gas_index)
+            if not isfinite(room[0, c.SPEED]):  # not physical: a shorter step, a new Jacobian
+                counts[AGE] = OLD
+                return 0
+        call(calls.factorise, (scaled, blocks, film.gas_index, calls.substitute))
         counts[FACTORED] = 1
         counts[FACTORISATIONS] += 1
         numbers[CONVERGENCE] = UNKNOWN
     last = 0.0
     for turn in range(TURNS):
-        c.rates(time, state, gas, film, work, room[0])
+        call(calls.rates, (time, state, gas, film, work, room[0]))
         counts[EVALUATIONS] += 1
         for a in range(state.size):
             room[6, a] = scaled * room[0, a] - room[2, a] - change[a]
-        newton.solve(scaled, blocks, film.gas_index, room[6], room[7])
+        call(calls.solve, (
+            scaled, blocks, film.gas_index, calls.substitute, room[6], room[7],
+        ))  # fmt: skip
         size = _norm(room[7], weights, work.fractions.shape)
         if not isfinite(size):
             return 0
@@ -187,7 +221,7 @@ def _newton(
     return 0
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _accept(order: int, memory: Memory) -> None:
     d, change = memory.differences, memory.room[3]
     for a in range(change.size):
@@ -197,10 +231,8 @@ def _accept(order: int, memory: Memory) -> None:
             d[i, a] += d[i + 1, a]
 
 
-@njit(cache=True, error_model="numpy")
-def _next_step(
-    relative: float, floors: Array, memory: Memory, shape: tuple[int, int]
-) -> None:
+@inner
+def _next_step(memory: Memory, shape: tuple[int, int]) -> None:
     """Choose order and size of the next step, once enough equal ones were taken."""
     counts, d, weights = memory.counts, memory.differences, memory.room[5]
     order = counts[ORDER]
@@ -220,7 +252,7 @@ def _next_step(
     _change_step(min(10.0, best), memory)
 
 
-@njit(cache=True, error_model="numpy")
+@making
 def _change_step(factor: float, memory: Memory) -> None:
     """Differences at a step ``factor`` times as long; the factorisation no longer fits."""
     order = memory.counts[ORDER]
@@ -246,7 +278,7 @@ def _change_step(factor: float, memory: Memory) -> None:
     memory.counts[EQUAL] = memory.counts[FACTORED] = 0
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _between(memory: Memory, out: Array) -> float:
     """Fill ``out`` with the state where the wall stands still in the last step; its time."""
     end, step = memory.numbers[TIME], memory.numbers[STEP]
@@ -263,7 +295,7 @@ def _between(memory: Memory, out: Array) -> float:
     return high
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _at(time: float, memory: Memory, a: int) -> float:
     """State ``a`` inside the last step, by the polynomial through its past."""
     d, step = memory.differences, memory.numbers[STEP]
@@ -275,7 +307,7 @@ def _at(time: float, memory: Memory, a: int) -> float:
     return total
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _norm(x: Array, weights: Array, shape: tuple[int, int]) -> float:
     """Largest of: radius, speed, and root mean square over gas and over film.
 
@@ -299,7 +331,7 @@ def _norm(x: Array, weights: Array, shape: tuple[int, int]) -> float:
     return worst
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _hottest(state: Array, shape: tuple[int, int]) -> float:
     cells, count = shape
     hottest = 0.0

@@ -1,11 +1,10 @@
-"""The linear solver of the resolved bubble: cells one after another, compiled.
+"""The Jacobian of the resolved bubble in parts, as ``cells_elimination`` solves with, compiled.
 
-CVODE solves (I - gamma J) x = r by GMRES; this is the preconditioner. J is taken with pressure,
-volumes and conductances held: then only neighbours touch, and in the amounts of a neighbour a
-block is a diagonal and two outer products. Elimination runs from the centre to the wall and on
-through the film. The pressure, which every cell feels, comes back in closed form (Sherman and
-Morrison 1950, Ann. Math. Stat. 21, 124). Every entry that takes from one cell gives to another, so
-that a Newton step conserves elements however well it converges.
+With pressure, volumes and conductances held only neighbours touch, and in the amounts of a
+neighbour a block is a diagonal and two outer products. What every cell feels (pressure's rate,
+pressure, mass taken up, radius and speed) comes beside the blocks as columns. Every entry that
+takes from one cell gives to another, so that a Newton step conserves elements however well it
+converges.
 """
 
 from __future__ import annotations
@@ -14,15 +13,17 @@ from math import pi
 from typing import NamedTuple
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
 from sonoyield.collapse import cells as c
 from sonoyield.collapse import equations as eq
 from sonoyield.collapse.aqueous import aqueous_jacobian
+from sonoyield.collapse.cells_rates import crowd
 from sonoyield.collapse.exchange import COVOLUME, ENTHALPY_AT_LIQUID, MASS
 from sonoyield.collapse.film_grid import film_conductances
-from sonoyield.collapse.kinetics import production_and_jacobian, thermo
+from sonoyield.collapse.kernel import call, inner
+from sonoyield.collapse.kinetics import thermo
+from sonoyield.collapse.small_matrices import copy
 from sonoyield.describe.gas import GAS_CONSTANT, Array
 
 Indices = NDArray[np.int64]
@@ -37,8 +38,7 @@ class Blocks(NamedTuple):
     outer: Array  # (N, 3, K): the same on the cell outside
     per_mass: Array  # (N, K), mol/kg at each face
     heat: Array  # (N, 2): temperature outside by the one inside, and back
-    wall: Array  # (4, K): flow into the liquid by amount, by share, by film concentration; what
-    # enthalpy it carries
+    wall: Array  # (4, K): flow into the liquid by amount, share, film; what enthalpy it carries
     film_own: Array  # (M, L, L)
     film_inverse: Array  # (M, L, L)
     film_inner: Array  # (M, L): cell i by cell i - 1
@@ -46,13 +46,15 @@ class Blocks(NamedTuple):
     squeeze: Array  # (S,): what a rate of pressure does to each state
     feels: Array  # (S,): pressure rate by each state's own rate, times the stiffness
     squeezed: Array  # (S,): the solution for ``squeeze``
-    numbers: Array  # (4,): stiffness, denominator, volume of the film's first cell, heat conductance
+    numbers: Array  # (4,): stiffness, denominator, volume of the film's first cell, conducted heat
     columns: Array  # (4, S): rates by pressure, mass taken up, radius and speed
     by_pressure: Array  # (S,): pressure by each state
     by_cell: Array  # (K,): mass taken up by the outermost cell's amounts
     by_film: Array  # (L,): mass taken up by the film's first concentrations
     solved: Array  # (4, S): the solutions for ``columns``
     small: Array  # (4, 4)
+    seen_by_all: Array  # (4, 4)
+    scalars: Array  # (4,)
     per_kelvin: Array  # (N,): amount in a cell over its temperature, which makes them comparable
     sizes: Array  # (3,): pressure, mass of the gas, radius
     trial: Array  # (2, S)
@@ -70,11 +72,13 @@ def blocks_for(cells: int, species: int, film: tuple[int, int], size: int) -> Bl
     m, (spots, kinds) = species + 1, film
     return Blocks(
         np.zeros((cells, m, m)), np.zeros((cells, m, m)), np.zeros((cells, 3, species)),
-        np.zeros((cells, 3, species)), np.zeros((cells, species)), np.zeros((cells, 2)), np.zeros((4, species)),
+        np.zeros((cells, 3, species)), np.zeros((cells, species)), np.zeros((cells, 2)),
+        np.zeros((4, species)),
         np.zeros((spots, kinds, kinds)), np.zeros((spots, kinds, kinds)),
         np.zeros((spots, kinds)), np.zeros((spots, kinds)), np.zeros(size), np.zeros(size),
         np.zeros(size), np.zeros(4), np.zeros((4, size)), np.zeros(size), np.zeros(species),
-        np.zeros(kinds), np.zeros((4, size)), np.zeros((4, 4)), np.zeros(cells), np.zeros(3),
+        np.zeros(kinds), np.zeros((4, size)), np.zeros((4, 4)),
+        np.zeros((4, 4)), np.zeros(4), np.zeros(cells), np.zeros(3),
         np.zeros((2, size)),
         np.zeros((m, m)), np.zeros((m, m)), np.zeros((3, m)),
         np.zeros((kinds, kinds)), np.zeros(kinds),
@@ -82,118 +86,23 @@ def blocks_for(cells: int, species: int, film: tuple[int, int], size: int) -> Bl
     )  # fmt: skip
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def evaluate(
-    time: float, state: Array, gas: c.Gas, film: c.Film, work: c.Work, blocks: Blocks, out: Array
-) -> None:
-    """Find the Jacobian's parts at a state; ``out`` takes its rates."""
-    c.rates(time, state, gas, film, work, out)
+    time: float, state: Array, gas: c.Gas, film: c.Film, work: c.Work, blocks: Blocks, rates: int,
+    out: Array,
+) -> None:  # fmt: skip
+    """Find the Jacobian's parts at a state; ``rates`` is their address, ``out`` takes them."""
+    call(rates, (time, state, gas, film, work, out))
     _own_chemistry(state, gas, work, blocks)
     _between(gas, work, blocks)
     _at_wall(gas, film, work, blocks)
     _film_blocks(state, film, work, blocks)
     _pressure_vectors(state, gas, work, blocks)
     _mass_vectors(gas, film, work, blocks)
-    _trial_columns(time, state, gas, film, work, blocks, out)
+    _trial_columns(time, state, gas, film, work, blocks, rates, out)
 
 
-@njit(cache=True, error_model="numpy")
-def factorise(gamma: float, blocks: Blocks, gas_index: Indices) -> None:
-    """Eliminate I - gamma J from the centre outwards, then what all cells feel."""
-    cells, m, _ = blocks.own.shape
-    for i in range(cells):
-        block = blocks.room
-        for a in range(m):
-            for b in range(m):
-                block[a, b] = -gamma * blocks.own[i, a, b]
-            block[a, a] += 1.0
-        if i > 0:
-            _take_out(gamma, i - 1, blocks, block)
-        _invert_scaled(block, blocks.per_kelvin[i], blocks.inverse[i])
-    _factorise_film(gamma, blocks, gas_index)
-    _substitute(gamma, blocks, gas_index, blocks.squeeze, blocks.squeezed)
-    blocks.numbers[1] = 1.0 - _felt(blocks, blocks.squeezed, blocks.squeeze)
-    small = np.eye(4)
-    for a in range(4):
-        _solve_locally(gamma, blocks, gas_index, blocks.columns[a], blocks.solved[a])
-        for b in range(4):
-            small[b, a] -= gamma * _scalar(b, blocks, blocks.solved[a])
-    pressure, weight, radius = blocks.sizes[0], blocks.sizes[1] / gamma, blocks.sizes[2]
-    sizes = (pressure, weight, radius, radius / gamma)
-    for a in range(4):
-        for b in range(4):
-            small[b, a] *= sizes[a] / sizes[b]
-    invert(small, blocks.small)
-    for a in range(4):
-        for b in range(4):
-            blocks.small[b, a] *= sizes[b] / sizes[a]
-
-
-@njit(cache=True, error_model="numpy")
-def solve(gamma: float, blocks: Blocks, gas_index: Indices, right: Array, out: Array) -> None:
-    """Solve (I - gamma J) ``out`` = ``right`` with the last factorisation (Woodbury 1950)."""
-    _solve_locally(gamma, blocks, gas_index, right, out)
-    scalars = np.empty(4)
-    for a in range(4):
-        scalars[a] = gamma * _scalar(a, blocks, out)
-    for a in range(4):
-        share = 0.0
-        for b in range(4):
-            share += blocks.small[a, b] * scalars[b]
-        for i in range(out.size):
-            out[i] += share * blocks.solved[a, i]
-
-
-@njit(cache=True, error_model="numpy")
-def multiply(blocks: Blocks, gas_index: Indices, x: Array, out: Array) -> None:
-    """Fill ``out`` with J x, the same J as ``solve`` inverts."""
-    _multiply_locally(blocks, gas_index, x, out)
-    for a in range(4):
-        scalar = _scalar(a, blocks, x)
-        for i in range(out.size):
-            out[i] += scalar * blocks.columns[a, i]
-
-
-@njit(cache=True, error_model="numpy")
-def _solve_locally(
-    gamma: float, blocks: Blocks, gas_index: Indices, right: Array, out: Array
-) -> None:
-    """Solve with neighbours and the pressure's rate, but without what else all cells feel."""
-    _substitute(gamma, blocks, gas_index, right, out)
-    scale = _felt(blocks, out, right) / blocks.numbers[1]
-    for a in range(out.size):
-        out[a] += scale * blocks.squeezed[a]
-
-
-@njit(cache=True, error_model="numpy")
-def _felt(blocks: Blocks, after: Array, before: Array) -> float:
-    """Rate of pressure (times gamma) from the change of the local rates."""
-    total = 0.0
-    for a in range(blocks.feels.size):
-        total += blocks.feels[a] * (after[a] - before[a])
-    return total / blocks.numbers[0]
-
-
-@njit(cache=True, error_model="numpy")
-def _scalar(which: int, blocks: Blocks, x: Array) -> float:
-    """Change of pressure, mass taken up, radius or speed with a change ``x`` of the state."""
-    if which >= 2:
-        return x[c.RADIUS] if which == 2 else x[c.SPEED]
-    total = 0.0
-    if which == 0:
-        for a in range(x.size):
-            total += blocks.by_pressure[a] * x[a]
-        return total
-    cells, m, _ = blocks.own.shape
-    first = c.CROSSED + m - 1 + cells * m
-    for k in range(m - 1):
-        total += blocks.by_cell[k] * x[first - m + k]
-    for s in range(blocks.by_film.size):
-        total += blocks.by_film[s] * x[first + s]
-    return total
-
-
-@njit(cache=True, error_model="numpy")
+@inner
 def _own_chemistry(state: Array, gas: c.Gas, work: c.Work, blocks: Blocks) -> None:
     """Rates of each cell by its own state: chemistry, at fixed pressure."""
     cells, count = work.fractions.shape
@@ -206,24 +115,23 @@ def _own_chemistry(state: Array, gas: c.Gas, work: c.Work, blocks: Blocks) -> No
     for i in range(cells):
         temperature, volume = state[at + count], work.cell[i, c.VOLUME]
         thermo(temperature, gas.nasa, work.capacity[i], work.enthalpy[i], gibbs)
-        c.crowd(
-            temperature, pressure, volume, work.cell[i, c.COVOLUMES], gas.species, crowding
-        )
+        crowd(temperature, pressure, volume, work.cell[i, c.COVOLUMES], gas.species, crowding)
         for k in range(count):
             concentration[k] = state[at + k] / volume
-        production_and_jacobian(
+        call(gas.derivatives, (
             temperature, concentration, gibbs, work.enthalpy[i], crowding, gas.dense,
             gas.kinetics, work.kinetics, work.row[3], blocks.derivatives, blocks.by_temperature,
-        )
+        ))  # fmt: skip
         _chemistry_block(i, temperature, volume, pressure, gas, work, blocks)
         at += count + 1
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _chemistry_block(
     i: int, temperature: float, volume: float, pressure: float, gas: c.Gas, work: c.Work,
     blocks: Blocks,
-) -> None:
+) -> None:  # fmt: skip
+    """The chemistry's derivatives as rates of the cell, whose volume follows its contents."""
     count = work.fractions.shape[1]
     own, made, concentration = blocks.own[i], work.row[3], work.row[2]
     amount = work.cell[i, c.AMOUNT]
@@ -246,14 +154,15 @@ def _chemistry_block(
         own[count, j] = released / heat
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _between(gas: c.Gas, work: c.Work, blocks: Blocks) -> None:
     """Diffusion and conduction through the inner faces, added to both cells."""
     cells, count = work.fractions.shape
     for i in range(cells - 1):
-        drift = 0.5 * work.face[i, c.DRIFT]
         for side in range(2):
             sign = 1.0 if side == 0 else -1.0
+            leans = work.face[i, c.LEANING]
+            drift = work.face[i, c.DRIFT] * (leans if side == 0 else 1.0 - leans)
             part = blocks.inner[i] if side == 0 else blocks.outer[i]
             amount = work.cell[i + side, c.AMOUNT]
             mean = 0.0
@@ -277,23 +186,27 @@ def _between(gas: c.Gas, work: c.Work, blocks: Blocks) -> None:
         _conduction(i, work, blocks)
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _conduction(i: int, work: c.Work, blocks: Blocks) -> None:
     count = work.fractions.shape[1]
     flows_in = flows_out = 0.0
     for k in range(count):
-        flows_in += 0.5 * work.flow[i, k] * work.capacity[i, k]
-        flows_out += 0.5 * work.flow[i, k] * work.capacity[i + 1, k]
+        flows_in += work.flow[i, k] * work.capacity[i, k]
+        flows_out += work.flow[i, k] * work.capacity[i + 1, k]
+    share = work.face[i, c.LEANING_HEAT]
+    carried = (share * flows_in, (1.0 - share) * flows_out)
+    flows_in *= 1.0 - share
+    flows_out *= share
     conducts = work.face[i, c.HEAT_CONDUCTANCE]
     inner = work.cell[i, c.AMOUNT] * work.cell[i, c.CAPACITY]
     outer = work.cell[i + 1, c.AMOUNT] * work.cell[i + 1, c.CAPACITY]
     blocks.own[i, count, count] += (flows_in - conducts) / inner
     blocks.own[i + 1, count, count] -= (flows_out + conducts) / outer
-    blocks.heat[i, 0] = (conducts + flows_in) / outer
-    blocks.heat[i, 1] = (conducts - flows_out) / inner
+    blocks.heat[i, 0] = (conducts + carried[0]) / outer
+    blocks.heat[i, 1] = (conducts - carried[1]) / inner
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _at_wall(gas: c.Gas, film: c.Film, work: c.Work, blocks: Blocks) -> None:
     """Flow through the wall by the outermost cell; what the film follows has no share term."""
     cells, count = work.fractions.shape
@@ -319,7 +232,7 @@ def _at_wall(gas: c.Gas, film: c.Film, work: c.Work, blocks: Blocks) -> None:
     blocks.own[last, count, count] -= blocks.numbers[3] / heat
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _film_blocks(state: Array, film: c.Film, work: c.Work, blocks: Blocks) -> None:
     cells, count = work.fractions.shape
     spots = film.edges.size - 1
@@ -352,7 +265,7 @@ def _film_blocks(state: Array, film: c.Film, work: c.Work, blocks: Blocks) -> No
             blocks.film_own[0, s, s] += by_film / film.edges[1]
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _pressure_vectors(state: Array, gas: c.Gas, work: c.Work, blocks: Blocks) -> None:
     cells, count = work.fractions.shape
     pressure, free = work.whole[c.PRESSURE], work.whole[c.FREE]
@@ -382,7 +295,7 @@ def _pressure_vectors(state: Array, gas: c.Gas, work: c.Work, blocks: Blocks) ->
     blocks.squeeze[c.LEDGER + eq.RADIATION] = -density * radius * pushed * growth
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _mass_vectors(gas: c.Gas, film: c.Film, work: c.Work, blocks: Blocks) -> None:
     """How taking up mass moves gas through all faces, and what decides it."""
     cells, count = work.fractions.shape
@@ -415,15 +328,16 @@ def _mass_vectors(gas: c.Gas, film: c.Film, work: c.Work, blocks: Blocks) -> Non
         blocks.by_film[s] = -gas.species[k, MASS] * blocks.wall[2, k] if k >= 0 else 0.0
 
 
-@njit(cache=True, error_model="numpy")
+@inner
 def _trial_columns(
-    time: float, state: Array, gas: c.Gas, film: c.Film, work: c.Work, blocks: Blocks, base: Array
-) -> None:
+    time: float, state: Array, gas: c.Gas, film: c.Film, work: c.Work, blocks: Blocks, rates: int,
+    base: Array,
+) -> None:  # fmt: skip
     """Rates by pressure, radius and speed, each with the other two held, by small differences."""
-    trial, rates = blocks.trial[0], blocks.trial[1]
+    trial, found = blocks.trial[0], blocks.trial[1]
     pressure = work.whole[c.PRESSURE]
     for a in (0, 2, 3):
-        trial[:] = state
+        copy(state, trial)
         work.whole[c.TRIAL] = 1.0
         if a == 0:
             step = NUDGE * pressure
@@ -436,278 +350,10 @@ def _trial_columns(
         else:
             step = NUDGE * max(abs(state[c.SPEED]), 1e-3 * gas.constants[eq.SOUND_SPEED])
             trial[c.SPEED] += step
-        c.rates(time, trial, gas, film, work, rates)
+        call(rates, (time, trial, gas, film, work, found))
         for i in range(base.size):
-            blocks.columns[a, i] = (rates[i] - base[i]) / step
+            blocks.columns[a, i] = (found[i] - base[i]) / step
     work.whole[c.TRIAL] = 1.0
 
 
 NUDGE = 1e-6  # relative step of the differences
-
-
-@njit(cache=True, error_model="numpy")
-def _take_out(gamma: float, i: int, blocks: Blocks, block: Array) -> None:
-    """Subtract from the block of cell i + 1 what comes back to it through cell i."""
-    m = block.shape[0]
-    count = m - 1
-    inverse, inner, outer, y = blocks.inverse[i], blocks.inner[i], blocks.outer[i], blocks.per_mass[i]
-    seen, lines = blocks.seen, blocks.lines
-    for a in range(m):
-        shares = masses = 0.0
-        for b in range(count):
-            shares += inverse[a, b] * outer[1, b]
-            masses += inverse[a, b] * y[b]
-        for b in range(count):
-            seen[a, b] = inverse[a, b] * outer[0, b] + shares - masses * outer[2, b]
-        seen[a, count] = inverse[a, count] * blocks.heat[i, 1]
-    lines[:2] = 0.0
-    for k in range(count):
-        for b in range(m):
-            lines[0, b] += seen[k, b]
-            lines[1, b] += inner[2, k] * seen[k, b]
-    square = gamma * gamma
-    for b in range(m):
-        for k in range(count):
-            block[k, b] -= square * (
-                inner[0, k] * seen[k, b] + inner[1, k] * lines[0, b] - y[k] * lines[1, b]
-            )
-        block[count, b] -= square * blocks.heat[i, 0] * seen[count, b]
-
-
-@njit(cache=True, error_model="numpy")
-def _factorise_film(gamma: float, blocks: Blocks, gas_index: Indices) -> None:
-    spots, kinds, _ = blocks.film_own.shape
-    last = blocks.own.shape[0] - 1
-    block = blocks.film_room
-    for i in range(spots):
-        for s in range(kinds):
-            for t in range(kinds):
-                block[s, t] = -gamma * blocks.film_own[i, s, t]
-                k, j = gas_index[s], gas_index[t]
-                if i > 0:
-                    through = blocks.film_inverse[i - 1, s, t] * blocks.film_outer[i - 1, t]
-                    block[s, t] -= gamma * gamma * blocks.film_inner[i, s] * through
-                elif k >= 0 and j >= 0:
-                    through = blocks.inverse[last, k, j] * blocks.wall[2, j]
-                    block[s, t] += gamma * gamma * blocks.wall[0, k] / blocks.numbers[2] * through
-            block[s, s] += 1.0
-        invert(block, blocks.film_inverse[i])
-
-
-@njit(cache=True, error_model="numpy")
-def _substitute(
-    gamma: float, blocks: Blocks, gas_index: Indices, right: Array, out: Array
-) -> None:
-    """Solve with pressure held: outwards through gas and film, then back."""
-    cells, m, _ = blocks.own.shape
-    count = m - 1
-    spots, kinds = blocks.film_inner.shape
-    start = c.CROSSED + count
-    first = start + cells * m
-    out[:start] = right[:start]
-    line = blocks.lines[2]
-    for i in range(cells):
-        at = start + i * m
-        if i > 0:
-            _outwards(gamma, i - 1, blocks, out[at - m : at], line)
-        else:
-            line[:] = 0.0
-        for a in range(m):
-            line[a] += right[at + a]
-        _times(blocks.inverse[i], line, out[at : at + m])
-    if spots > 0:
-        _substitute_film(gamma, blocks, gas_index, right, out)
-        line[:] = 0.0
-        for s in range(kinds):
-            if gas_index[s] >= 0:
-                line[gas_index[s]] = -gamma * blocks.wall[2, gas_index[s]] * out[first + s]
-        _add_times(blocks.inverse[cells - 1], line, out[first - m : first])
-    for i in range(cells - 2, -1, -1):
-        at = start + i * m
-        _inwards(gamma, i, blocks, out[at + m : at + 2 * m], line)
-        _add_times(blocks.inverse[i], line, out[at : at + m])
-    _follow_wall(gamma, blocks, gas_index, out, out)
-
-
-@njit(cache=True, error_model="numpy")
-def _substitute_film(
-    gamma: float, blocks: Blocks, gas_index: Indices, right: Array, out: Array
-) -> None:
-    cells, m, _ = blocks.own.shape
-    spots, kinds = blocks.film_inner.shape
-    first = c.CROSSED + m - 1 + cells * m
-    line = blocks.film_line
-    for i in range(spots):
-        at = first + i * kinds
-        for s in range(kinds):
-            line[s] = right[at + s]
-            if i > 0:
-                line[s] += gamma * blocks.film_inner[i, s] * out[at - kinds + s]
-            elif gas_index[s] >= 0:
-                flow = blocks.wall[0, gas_index[s]] * out[first - m + gas_index[s]]
-                line[s] += gamma * flow / blocks.numbers[2]
-        _times(blocks.film_inverse[i], line, out[at : at + kinds])
-    for i in range(spots - 2, -1, -1):
-        at = first + i * kinds
-        for s in range(kinds):
-            line[s] = gamma * blocks.film_outer[i, s] * out[at + kinds + s]
-        _add_times(blocks.film_inverse[i], line, out[at : at + kinds])
-
-
-@njit(cache=True, error_model="numpy")
-def _outwards(gamma: float, i: int, blocks: Blocks, x: Array, line: Array) -> None:
-    """Fill ``line`` with what cell i + 1 feels of a change ``x`` of cell i."""
-    count = x.size - 1
-    part = blocks.inner[i]
-    _neighbour(gamma, part, blocks.per_mass[i], x, line)
-    line[count] = gamma * blocks.heat[i, 0] * x[count]
-
-
-@njit(cache=True, error_model="numpy")
-def _inwards(gamma: float, i: int, blocks: Blocks, x: Array, line: Array) -> None:
-    """Fill ``line`` with what cell i feels of a change ``x`` of cell i + 1."""
-    count = x.size - 1
-    _neighbour(gamma, blocks.outer[i], blocks.per_mass[i], x, line)
-    line[count] = gamma * blocks.heat[i, 1] * x[count]
-
-
-@njit(cache=True, error_model="numpy")
-def _neighbour(gamma: float, part: Array, per_mass: Array, x: Array, line: Array) -> None:
-    shares = masses = 0.0
-    for k in range(per_mass.size):
-        shares += x[k]
-        masses += part[2, k] * x[k]
-    for k in range(per_mass.size):
-        line[k] = gamma * (part[0, k] * x[k] + part[1, k] * shares - per_mass[k] * masses)
-
-
-@njit(cache=True, error_model="numpy")
-def _follow_wall(
-    gamma: float, blocks: Blocks, gas_index: Indices, x: Array, out: Array
-) -> None:
-    """Add what crosses with a change ``x`` of the outermost cell and of the film."""
-    cells, m, _ = blocks.own.shape
-    first = c.CROSSED + m - 1 + cells * m
-    shares = 0.0
-    for k in range(m - 1):
-        shares += x[first - m + k]
-    carried = 0.0
-    for k in range(m - 1):
-        flow = blocks.wall[0, k] * x[first - m + k] + blocks.wall[1, k] * shares
-        out[c.CROSSED + k] += gamma * flow
-        carried += blocks.wall[3, k] * flow
-    if blocks.film_inner.shape[0] > 0:
-        for s in range(gas_index.size):
-            k = gas_index[s]
-            if k >= 0:
-                flow = blocks.wall[2, k] * x[first + s]
-                out[c.CROSSED + k] += gamma * flow
-                carried += blocks.wall[3, k] * flow
-    out[c.LEDGER + eq.CARRIED] += gamma * carried
-    out[c.LEDGER + eq.HEAT] += gamma * blocks.numbers[3] * x[first - 1]
-
-
-@njit(cache=True, error_model="numpy")
-def _times(matrix: Array, x: Array, out: Array) -> None:
-    out[:] = 0.0
-    _add_times(matrix, x, out)
-
-
-@njit(cache=True, error_model="numpy", fastmath=True)
-def _add_times(matrix: Array, x: Array, out: Array) -> None:
-    for a in range(out.size):
-        total = 0.0
-        for b in range(out.size):
-            total += matrix[a, b] * x[b]
-        out[a] += total
-
-
-@njit(cache=True, error_model="numpy")
-def _multiply_locally(blocks: Blocks, gas_index: Indices, x: Array, out: Array) -> None:
-    """Fill ``out`` with J x as far as neighbours and the pressure's rate make it."""
-    cells, m, _ = blocks.own.shape
-    start = c.CROSSED + m - 1
-    first = start + cells * m
-    line = blocks.lines[2]
-    out[:start] = 0.0
-    for i in range(cells):
-        at = start + i * m
-        _times(blocks.own[i], x[at : at + m], out[at : at + m])
-        if i > 0:
-            _outwards(1.0, i - 1, blocks, x[at - m : at], line)
-            out[at : at + m] += line
-        if i + 1 < cells:
-            _inwards(1.0, i, blocks, x[at + m : at + 2 * m], line)
-            out[at : at + m] += line
-    _multiply_film(blocks, gas_index, x, out)
-    _follow_wall(1.0, blocks, gas_index, x, out)
-    felt = 0.0
-    for a in range(start, first):
-        felt += blocks.feels[a] * out[a]
-    felt /= blocks.numbers[0]
-    for a in range(first):
-        out[a] += felt * blocks.squeeze[a]
-
-
-@njit(cache=True, error_model="numpy")
-def _multiply_film(blocks: Blocks, gas_index: Indices, x: Array, out: Array) -> None:
-    cells, m, _ = blocks.own.shape
-    spots, kinds = blocks.film_inner.shape
-    first = c.CROSSED + m - 1 + cells * m
-    for i in range(spots):
-        at = first + i * kinds
-        _times(blocks.film_own[i], x[at : at + kinds], out[at : at + kinds])
-        for s in range(kinds):
-            if i > 0:
-                out[at + s] += blocks.film_inner[i, s] * x[at - kinds + s]
-            elif gas_index[s] >= 0:
-                k = gas_index[s]
-                out[at + s] += blocks.wall[0, k] * x[first - m + k] / blocks.numbers[2]
-                out[first - m + k] -= blocks.wall[2, k] * x[at + s]
-            if i + 1 < spots:
-                out[at + s] += blocks.film_outer[i, s] * x[at + kinds + s]
-
-
-@njit(cache=True, error_model="numpy")
-def invert(matrix: Array, out: Array) -> None:
-    """Fill ``out`` with the inverse of ``matrix``, which is spoilt (Gauss and Jordan, row pivots).
-
-    For blocks this small faster than a library call, and a singular one gives not-a-number.
-    """
-    size = matrix.shape[0]
-    out[:] = 0.0
-    for a in range(size):
-        out[a, a] = 1.0
-    for a in range(size):
-        pivot = a
-        for b in range(a + 1, size):
-            if abs(matrix[b, a]) > abs(matrix[pivot, a]):
-                pivot = b
-        if pivot != a:
-            for b in range(size):
-                matrix[a, b], matrix[pivot, b] = matrix[pivot, b], matrix[a, b]
-                out[a, b], out[pivot, b] = out[pivot, b], out[a, b]
-        scale = 1.0 / matrix[a, a]
-        for b in range(size):
-            matrix[a, b] *= scale
-            out[a, b] *= scale
-        for row in range(size):
-            factor = matrix[row, a]
-            if row != a and factor != 0.0:
-                for b in range(a, size):
-                    matrix[row, b] -= factor * matrix[a, b]
-                for b in range(size):
-                    out[row, b] -= factor * out[a, b]
-
-
-@njit(cache=True, error_model="numpy")
-def _invert_scaled(block: Array, per_kelvin: float, out: Array) -> None:
-    """Invert with amounts and temperature on one scale, or pivots are chosen by units."""
-    last = block.shape[0] - 1
-    for a in range(last):
-        block[a, last] /= per_kelvin
-        block[last, a] *= per_kelvin
-    invert(block, out)
-    for a in range(last):
-        out[a, last] *= per_kelvin
-        out[last, a] /= per_kelvin

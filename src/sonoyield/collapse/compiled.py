@@ -14,11 +14,16 @@ from pathlib import Path
 
 HERE = Path(__file__).parent
 STAMP = "sonoyield-sources.txt"
+OUTERMOST = ("cold.integrate_frozen", "cells_bdf.integrate")
 
 
 def is_cached() -> bool:
-    """Whether an earlier run left this version's compiled stages in any of numba's places."""
-    return any(any(place.glob("cold.integrate_frozen-*.nbc")) for place in _places())
+    """Whether an earlier run left this version's compiled stages in any of numba's places.
+
+    Of each kind of run, well mixed and resolved, the outermost function is looked for: it is
+    compiled last.
+    """
+    return any(all(any(place.glob(f"{one}-*.nbc")) for one in OUTERMOST) for place in _places())
 
 
 def discard_stale() -> None:

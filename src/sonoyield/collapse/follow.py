@@ -48,7 +48,7 @@ class Accuracy:
     split: bool = True
     steps: int = 40_000
     tighten: int = 4
-    seconds: float = 120.0
+    seconds: float = 60.0
 
 
 def follow(bubble: Bubble, collapses: int = 1, accuracy: Accuracy | None = None) -> History:

@@ -32,8 +32,8 @@ class History:
     ``times`` (N,) s and ``states`` (N, S) as laid out in ``equations``. ``marks`` are the rows of
     rest and of each main expansion maximum; ``windows`` pairs of rows from rest to the second
     main maximum, then from one to the next. ``stopped`` says why the run ended early, or is
-    empty. ``counters`` are the integrators' steps and evaluations. ``cells`` where the gas is resolved;
-    the states then hold the mole mean of its temperature.
+    empty. ``counters`` are the integrators' steps and evaluations. ``cells`` where the gas is
+    resolved; the states then hold the mole mean of its temperature.
     """
 
     bubble: Bubble

@@ -23,7 +23,7 @@ from numba import njit
 from sonoyield.collapse.kinetics_arrays import FIXED, LINDEMANN, SMALLEST, Indices
 from sonoyield.collapse.kinetics_arrays import Scratch as Scratch
 from sonoyield.collapse.kinetics_arrays import Tables as Tables
-from sonoyield.collapse.properties import COLDEST, HIGH
+from sonoyield.collapse.properties import COLDEST, HIGH, HOTTEST
 from sonoyield.describe.gas import GAS_CONSTANT, Array
 
 STEEPEST = 690.0  # largest exponent that is taken: exp stays finite, so that 0 times it is 0
@@ -41,13 +41,13 @@ def thermo(temperature: float, nasa: Array, capacity: Array, enthalpy: Array, gi
     """Fill ``capacity`` J/mol/K, ``enthalpy`` J/mol and ``gibbs`` g0/(R_u T), each (K,).
 
     ``nasa`` (K, I, 11) as in ``GasPhase``; the standard pressure is the mechanism's own. Below
-    200 K heat capacities are held, and entropies follow. McBride, Zehe, Gordon 2002
-    (NASA/TP-2002-211556), nine-coefficient form.
+    200 K and above 20 000 K heat capacities are held, and entropies follow. McBride, Zehe, Gordon
+    2002 (NASA/TP-2002-211556), nine-coefficient form.
     """
-    t = max(temperature, COLDEST)
+    t = min(max(temperature, COLDEST), HOTTEST)
     inverse = 1.0 / t
     logarithm = log(t)
-    below = 0.0 if temperature >= COLDEST else log(temperature * inverse)
+    beyond = 0.0 if temperature == t else log(temperature * inverse)
     last = nasa.shape[1] - 1
     for k in range(nasa.shape[0]):
         i = 0
@@ -63,7 +63,7 @@ def thermo(temperature: float, nasa: Array, capacity: Array, enthalpy: Array, gi
         h = h * t + cp * (temperature - t)
         capacity[k] = cp * GAS_CONSTANT
         enthalpy[k] = h * GAS_CONSTANT
-        gibbs[k] = h / temperature - s - cp * below
+        gibbs[k] = h / temperature - s - cp * beyond
 
 
 @njit(cache=True, error_model="numpy")
@@ -113,8 +113,18 @@ def _rates_of_progress(
     forward, reverse, c, scale = scratch.forward, scratch.reverse, scratch.filled, scratch.scale
     for r in range(forward.size):
         s = scale[scaled[r]]
-        forward[r] *= s * c[left[r, 0]] * c[left[r, 1]] * c[left[r, 2]]
-        reverse[r] *= s * c[right[r, 0]] * c[right[r, 1]] * c[right[r, 2]]
+        forward[r] *= s * _together(c[left[r, 0]], c[left[r, 1]], c[left[r, 2]])
+        reverse[r] *= s * _together(c[right[r, 0]], c[right[r, 1]], c[right[r, 2]])
+
+
+@njit(cache=True, error_model="numpy", inline="always")
+def _together(a: float, b: float, d: float) -> float:
+    """Product of three concentrations, never positive with a negative one among them.
+
+    Two slightly negative ones would react all the faster the more negative they are, without end.
+    """
+    product = a * b * d
+    return -abs(product) if min(a, min(b, d)) < 0.0 else product
 
 
 @njit(cache=True, error_model="numpy", inline="always")
@@ -313,19 +323,26 @@ def _partials(inverse: float, tables: Tables, scratch: Scratch) -> None:
         kf, kr = scratch.forward[r], scratch.reverse[r]
         a, b, d = left[r, 0], left[r, 1], left[r, 2]
         x, y, z = right[r, 0], right[r, 1], right[r, 2]
+        ahead, back = _together(c[a], c[b], c[d]), kr * _together(c[x], c[y], c[z])
+        kf, kr = _turned(kf, c[a], c[b], c[d]), _turned(kr, c[x], c[y], c[z])
         partial[r, 0] = s * kf * c[b] * c[d]
         partial[r, 1] = s * kf * c[a] * c[d]
         partial[r, 2] = s * kf * c[a] * c[b]
         partial[r, 3] = -s * kr * c[y] * c[z]
         partial[r, 4] = -s * kr * c[x] * c[z]
         partial[r, 5] = -s * kr * c[x] * c[y]
-        back = kr * c[x] * c[y] * c[z]
-        net = kf * c[a] * c[b] * c[d] - back
+        net = scratch.forward[r] * ahead - back
         freed = energy[x] + energy[y] + energy[z] - energy[a] - energy[b] - energy[d]
         rise = (tables.exponent[r] + tables.activation[r] * inverse) * inverse
         scratch.net[r] = s * net
         scratch.helping[r] = scratch.slope[i] * net
         scratch.warmed[r] = s * (net * (rise + scratch.warming[i]) + back * freed)
+
+
+@njit(cache=True, error_model="numpy", inline="always")
+def _turned(k: float, a: float, b: float, d: float) -> float:
+    """Rate constant with the sign ``_together`` gives to the plain product."""
+    return -k if min(a, min(b, d)) < 0.0 and a * b * d > 0.0 else k
 
 
 @njit(cache=True, error_model="numpy", inline="always")

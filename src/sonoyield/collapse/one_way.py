@@ -149,7 +149,7 @@ def _gather(
         frozen.bubble, times, states, marks, stopped,
         frozen.counters | {"hot_steps": stage.steps, "evaluations": stage.evaluations,
                            "stages": stage.starts},
-        beside, rows[:, -1], stage.volume_error,
+        frozen=beside, supplied=rows[:, -1], volume_error=stage.volume_error,
     )  # fmt: skip
 
 

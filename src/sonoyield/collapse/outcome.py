@@ -67,8 +67,8 @@ def outcome_of(history: History, collapse: Collapse, balance: Balance) -> Outcom
     if not balance.closed:
         return Outcome(
             Code.LEDGER_OPEN,
-            f"Energy closes to {balance.energy_error:.1e} of the work (limit {balance.energy_limit:.0e}) "
-            f"and elements to {balance.element_error:.1e}; no number is given.",
+            f"Energy closes to {balance.energy_error:.1e} of the work "
+            f"(limit {balance.energy_limit:.0e}) and elements to {balance.element_error:.1e}; no number is given.",
         )
     if history.stopped == NO_MAXIMUM and not history.windows and collapse.inertial:
         return Outcome(

@@ -15,6 +15,7 @@ from numba import njit
 from sonoyield.describe.gas import GAS_CONSTANT, Array
 
 COLDEST = 200.0  # K, lowest temperature of the thermo polynomials
+HOTTEST = 20_000.0  # K, highest: beyond it they run through zero
 COLDEST_TRANSPORT = 100.0  # K; the transport fits, made from 200 K up, are smooth down to here
 TRACE = 1e-9  # mole fraction; what is rarer does not count in the transport of the mixture
 LOW, HIGH = 9, 10  # columns of an interval's bounds
@@ -28,7 +29,7 @@ def heat_capacity_and_enthalpy(
 
     McBride, Zehe, Gordon 2002 (NASA/TP-2002-211556), nine-coefficient form.
     """
-    t = max(temperature, COLDEST)
+    t = min(max(temperature, COLDEST), HOTTEST)
     inverse = 1.0 / t
     logarithm = log(t)
     last = nasa.shape[1] - 1

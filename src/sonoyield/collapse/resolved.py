@@ -7,18 +7,26 @@ While the gas is cold and fresh only what is there at rest is carried and nothin
 from __future__ import annotations
 
 from dataclasses import replace
+from math import inf
 from time import monotonic
 
 import numpy as np
 
 from sonoyield.collapse import cells as c
 from sonoyield.collapse import cells_bdf as bdf
-from sonoyield.collapse import equations as eq
 from sonoyield.collapse.aqueous import FILM_OF_GAS, AqueousChemistry
 from sonoyield.collapse.bubble import Bubble
 from sonoyield.collapse.exchange import CROSSES, SURFACE
 from sonoyield.collapse.film_grid import film_edges
-from sonoyield.collapse.follow import FAILED, NO_MAXIMUM, PATIENCE, STEP_LIMIT, TIME_LIMIT, Accuracy, at_rest
+from sonoyield.collapse.follow import (
+    FAILED,
+    NO_MAXIMUM,
+    PATIENCE,
+    STEP_LIMIT,
+    TIME_LIMIT,
+    Accuracy,
+    at_rest,
+)
 from sonoyield.collapse.history import CellRecord, History, Recorder
 from sonoyield.collapse.ledger import balance
 from sonoyield.collapse.marks import Marks
@@ -26,12 +34,13 @@ from sonoyield.collapse.stage import Stage
 from sonoyield.describe.gas import Array
 
 CELLS = 20
-NARROWING = 0.85  # thickness of a cell over that of the one inside it, at rest
+NARROWEST = 0.08  # thickness of the outermost shell over that of the inmost, about, at rest
 WARM = 1000.0  # K of the hottest cell, above which gas may react
 COUNTERS = ("steps", "evaluations", "jacobians", "factorisations", "stages")
 FIRST_STEP = 1e-5  # of the period
 CHUNK = 256  # steps between looks at the clock
 FILM_CELLS = 16
+WALLS = ("liquid_temperature",)  # what holds the surface's temperature
 
 
 def follow_resolved(
@@ -40,26 +49,32 @@ def follow_resolved(
     accuracy: Accuracy | None = None,
     cells: int = CELLS,
     chemistry: AqueousChemistry | None = None,
+    wall: str = "liquid_temperature",
+    temperature_jump: bool = False,
 ) -> History:
     """Integrate from rest until ``collapses`` windows are complete, as ``follow`` does.
 
-    ``chemistry`` of the liquid film; without it what crosses never comes back.
+    ``chemistry`` of the liquid film; without it what crosses never comes back. With
+    ``temperature_jump`` the surface resists heat as kinetic theory has it. Raises ``ValueError``
+    for a ``wall`` that is not in ``WALLS``.
     """
+    if wall not in WALLS:
+        raise ValueError(f"wall {wall!r}: allowed {', '.join(WALLS)}")
     accuracy = accuracy or Accuracy()
     if bubble.pressure_amplitude == 0.0:
         return at_rest(bubble)
-    history = _Run(bubble, collapses, accuracy, cells, chemistry).complete()
+    history = _Run(bubble, collapses, accuracy, cells, chemistry, temperature_jump).complete()
     for _ in range(accuracy.tighten):
         if history.stopped in (STEP_LIMIT, FAILED, TIME_LIMIT) or balance(history).closed:
             break
         accuracy = replace(accuracy, relative=0.1 * accuracy.relative)
-        history = _Run(bubble, collapses, accuracy, cells, chemistry).complete()
+        history = _Run(bubble, collapses, accuracy, cells, chemistry, temperature_jump).complete()
     return history
 
 
-def mass_fractions(cells: int, narrowing: float = NARROWING) -> Array:
+def mass_fractions(cells: int, narrowest: float = NARROWEST) -> Array:
     """Mass inside each face over that of the bubble (cells + 1,): shells thinner to the wall."""
-    thickness = narrowing ** np.arange(cells)
+    thickness = narrowest ** (np.arange(cells) / cells)
     radii = np.concatenate([[0.0], np.cumsum(thickness) / thickness.sum()])
     return radii**3
 
@@ -72,11 +87,12 @@ class _Run:
         accuracy: Accuracy,
         cells: int,
         chemistry: AqueousChemistry | None,
+        temperature_jump: bool,
     ) -> None:
+        self.jump = temperature_jump
         self.bubble, self.accuracy, self.chemistry = bubble, accuracy, chemistry
         self.faces = mass_fractions(cells)
         self.most = accuracy.steps * collapses
-        self.began = monotonic()
         self.record = Recorder(bubble.at_rest())
         self.marks = Marks(bubble, self.record, collapses + 2)
         self.moles = [np.outer(np.diff(self.faces), bubble.moles)[None]]
@@ -88,13 +104,16 @@ class _Run:
         fresh = np.flatnonzero(self.bubble.moles > 0.0)
         water = self.bubble.phase.index("H2O")
         stage = Stage(
-            self.bubble, sorted({*fresh, water}), self.faces, False, self.bubble.species, NO_FILM
+            self.bubble, sorted({*fresh, water}), self.faces, False, self.bubble.species, NO_FILM,
+            self.jump,
+        )  # fmt: skip
+        stopped = self._carry(
+            stage, self._beginning(stage), FIRST_STEP * self.bubble.period
         )
-        stopped = self._carry(stage, self._beginning(stage))
         if not stopped and not self.marks.complete:
             film, table = self._film()
             hot = Stage(
-                self.bubble, range(len(self.bubble.moles)), self.faces, True, table, film
+                self.bubble, range(len(self.bubble.moles)), self.faces, True, table, film, self.jump
             )
             crossed = np.zeros(len(self.bubble.moles))
             crossed[stage.kept] = stage.state[c.CROSSED : stage.start]
@@ -102,7 +121,7 @@ class _Run:
                 stage.state[: c.CROSSED], crossed, self.moles[-1][-1], self.temperatures[-1][-1]
             )
             hot.time = stage.time
-            stopped = self._carry(hot, state)
+            stopped = self._carry(hot, state, stage.last_step)
         return self._history(stopped)
 
     def _beginning(self, stage: Stage) -> Array:
@@ -111,11 +130,11 @@ class _Run:
         nothing = np.zeros(len(self.bubble.moles))
         return stage.compose(head, nothing, self.moles[0][0], self.temperatures[0][0])
 
-    def _carry(self, stage: Stage, state: Array) -> str:
+    def _carry(self, stage: Stage, state: Array, step: float) -> str:
         """Step until all marks are there, fresh gas is warm, or the run must stop."""
-        stage.begin(stage.time, FIRST_STEP * self.bubble.period, state)
+        stage.begin(stage.time, step, state)
         warm = np.inf if stage.gas.reactive else WARM
-        stopped, began = "", self.counters["steps"]
+        stopped, before, began = "", self.counters["steps"], inf
         self.counters["stages"] += 1
         while not stopped and not self.marks.complete:
             deadline = self.marks.latest + PATIENCE * self.bubble.period
@@ -127,10 +146,11 @@ class _Run:
                 stopped = FAILED
             elif why == bdf.END:
                 stopped = NO_MAXIMUM
-            elif began + stage.counts["steps"] >= self.most:
+            elif before + stage.counts["steps"] >= self.most:
                 stopped = STEP_LIMIT
-            elif monotonic() - self.began > self.accuracy.seconds:
+            elif monotonic() - began > self.accuracy.seconds:
                 stopped = TIME_LIMIT
+            began = min(began, monotonic())  # the first stretch may have had to compile
         for name, count in stage.counts.items():
             self.counters[name] += count
         return stopped

@@ -11,7 +11,7 @@ from sonoyield.collapse import cells_bdf as bdf
 from sonoyield.collapse import cells_newton as newton
 from sonoyield.collapse import equations as eq
 from sonoyield.collapse.bubble import CONTENTS_FLOOR, Bubble
-from sonoyield.collapse.kinetics_tables import compile_kinetics
+from sonoyield.collapse.kinetics_fallback import cell_kinetics
 from sonoyield.describe.gas import Array
 
 
@@ -19,6 +19,7 @@ class Stage:
     """The cells of a bubble with some of its phase's species; ``faces`` (N+1,) as in ``Gas``.
 
     ``table`` is the bubble's table of species, with what else crosses where there is a film.
+    ``temperature_jump``: the surface resists heat, as ``cells_flows`` says.
     """
 
     def __init__(
@@ -29,11 +30,12 @@ class Stage:
         reactive: bool,
         table: Array,
         film: c.Film,
+        temperature_jump: bool = False,
     ) -> None:
         self.bubble, self.kept = bubble, np.asarray(species, dtype=np.intp)
         self.cells, self.count = len(faces) - 1, len(self.kept)
         self.film, self.faces = film, faces
-        kinetics = compile_kinetics(bubble.phase)
+        kinetics = cell_kinetics(bubble.phase)
         phase, constants = bubble.phase, bubble.constants.copy()
         constants[eq.WATER] = list(self.kept).index(phase.index("H2O"))
         self.gas = c.Gas(
@@ -46,21 +48,27 @@ class Stage:
             reactive,
             bubble.dense,
             kinetics.tables,
+            kinetics.production,
+            kinetics.derivatives,
+            temperature_jump,
         )
         shape = self.spots = (len(film.edges) - 1, len(film.gas_index))
         self.start = c.CROSSED + self.count
         self.wet = self.start + self.cells * (self.count + 1)
         self.size = self.wet + shape[0] * shape[1]
-        self.work = c.work_for(self.cells, self.count, kinetics.scratch(), shape)
+        self.work = c.work_for(self.cells, self.count, kinetics.scratch, shape)
         self.blocks = newton.blocks_for(self.cells, self.count, shape, self.size)
         self.time, self.state = 0.0, np.zeros(self.size)
         self.memory = bdf.memory_for(self.size)
+        self.calls = bdf.calls_for(self.state, self.gas, film, self.work, self.blocks)
         self.floors = self._floors()
 
     def begin(self, time: float, step: float, state: Array) -> None:
         """Start from a state laid out as in ``cells`` with a first ``step`` in s."""
         self.time, self.state = time, state
-        bdf.begin(time, step, state, self.gas, self.film, self.memory, self.work)
+        bdf.begin(
+            time, step, state, self.gas, self.film, self.memory, self.work, self.calls
+        )
 
     def advance(
         self, stop: float, relative: float, warm: float, most: int
@@ -72,11 +80,16 @@ class Stage:
         times, states = np.empty(most), np.empty((most, self.size))
         why, taken = bdf.integrate(
             stop, relative, self.floors, warm, self.gas, self.film, self.memory, self.work,
-            self.blocks, times, states,
+            self.blocks, self.calls, times, states,
         )  # fmt: skip
         if taken:
             self.time, self.state = float(times[taken - 1]), states[taken - 1].copy()
         return why, times[:taken], states[:taken]
+
+    @property
+    def last_step(self) -> float:
+        """Size of the step to come, s."""
+        return float(self.memory.numbers[bdf.STEP])
 
     @property
     def counts(self) -> dict[str, int]:

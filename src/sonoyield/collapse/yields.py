@@ -19,9 +19,16 @@ REPORTED_IF_THERE = ("NO", "NO2", "HONO", "HONO2", "N2O")  # by mechanisms with 
 
 @dataclass(frozen=True)
 class Collapse:
-    """The strongest collapse of a run; SI units, ``vapour_fraction_at_peak`` a mole fraction."""
+    """The strongest collapse of a run; SI units, ``vapour_fraction_at_peak`` a mole fraction.
+
+    ``peak_temperature_K`` is the mole mean over the gas. Of a resolved gas
+    ``centre_temperature_K`` is the highest at the centre and ``hottest_temperature_K`` the highest
+    of any cell, which may lie further out; both are ``None`` where the gas is mixed.
+    """
 
     peak_temperature_K: float
+    centre_temperature_K: float | None
+    hottest_temperature_K: float | None
     peak_pressure_Pa: float
     max_radius_m: float
     min_radius_m: float
@@ -56,6 +63,8 @@ def collapse_of(history: History) -> Collapse:
     water = moles[history.bubble.phase.index("H2O")]
     return Collapse(
         peak_temperature_K=float(temperature[hottest]),
+        centre_temperature_K=_centre(history, end),
+        hottest_temperature_K=_hottest(history, end),
         peak_pressure_Pa=float(history.pressure[:end].max()),
         max_radius_m=largest,
         min_radius_m=smallest,
@@ -63,9 +72,31 @@ def collapse_of(history: History) -> Collapse:
         time_of_peak_s=float(history.times[hottest]),
         peak_wall_speed_m_s=float(np.abs(history.speed[:end]).max()),
         vapour_fraction_at_peak=float(max(water, 0.0) / moles.sum()),
-        lowest_temperature_K=float(temperature.min()),
+        lowest_temperature_K=_lowest(history, end),
         inertial=inertial(largest / history.bubble.radius),
     )
+
+
+def _hottest(history: History, end: int) -> float | None:
+    return None if history.cells is None else float(history.cells.temperature[:end].max())
+
+
+def _lowest(history: History, end: int) -> float:
+    """Lowest temperature anywhere in the gas, K."""
+    gas = history.temperature if history.cells is None else history.cells.temperature
+    return float(gas[:end].min())
+
+
+def _centre(history: History, end: int) -> float | None:
+    """Highest temperature at the centre, from a parabola in r through the two inmost cells, K."""
+    if history.cells is None:
+        return None
+    inner, outer = history.cells.temperature[:end, 0], history.cells.temperature[:end, 1]
+    # Of T = T0 - a r^2 a cell has the value at its mean r^2; volumes go nearly as masses here.
+    first, second = history.cells.faces[1] ** (2 / 3), history.cells.faces[2] ** (2 / 3)
+    near = 0.6 * first
+    far = 0.6 * (second**2.5 - first**2.5) / (second**1.5 - first**1.5)
+    return float((inner + (inner - outer) * near / (far - near)).max())
 
 
 def counts_of(history: History) -> dict[str, Counts]:

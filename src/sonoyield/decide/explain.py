@@ -28,7 +28,8 @@ from sonoyield.decide.kinetics_uncertainty import (
 )
 from sonoyield.decide.production import Production, mismatch, productions
 from sonoyield.describe.protocol import Protocol
-from sonoyield.expose.estimate import SCHEMA, Estimate, estimate
+from sonoyield.expose.estimate import estimate
+from sonoyield.expose.result import SCHEMA, Estimate
 
 SCREENED = 15  # rates whose sensitivity is taken
 # Step in ln k. Small enough for a derivative (the error is of its square), large enough to stand
@@ -109,7 +110,7 @@ def explain(protocol: Protocol, species: tuple[str, ...] = ("OH", "H2O2")) -> Ex
     Raises ``SpeciesError`` for a species that the result does not report, ``FileNotFoundError``
     when the mechanism is not installed.
     """
-    result = estimate(protocol, accuracy=FINE)
+    result = estimate(protocol, accuracy=FINE, fast=True)
     _check(species, result)
     if not result.outcome.code.has_numbers:
         return Explanation(result, ())

@@ -2,27 +2,24 @@
 
 from __future__ import annotations
 
-import hashlib
-import json
-from dataclasses import asdict, dataclass, replace
-from importlib.metadata import version
-from math import isfinite
+from dataclasses import asdict, replace
 from typing import Any
 
-from sonoyield._version import __version__
+from sonoyield.collapse.aqueous import aqueous_chemistry
 from sonoyield.collapse.bubble import Bubble
-from sonoyield.collapse.follow import PATIENCE, Accuracy, follow
+from sonoyield.collapse.caught import catches, dissolved_gases
+from sonoyield.collapse.film_cycles import FilmError
+from sonoyield.collapse.follow import Accuracy, follow
 from sonoyield.collapse.history import History
-from sonoyield.collapse.ionisation import THRESHOLD, IonisationEstimate, ionisation_of
-from sonoyield.collapse.ledger import Balance, Energies, balance, energies
+from sonoyield.collapse.ionisation import ionisation_of
+from sonoyield.collapse.ledger import Energies, balance, energies
 from sonoyield.collapse.one_way import follow_one_way
-from sonoyield.collapse.outcome import Code, Outcome, outcome_of
-from sonoyield.collapse.thermo_range import ThermoRange, thermo_range
+from sonoyield.collapse.outcome import outcome_of
+from sonoyield.collapse.resolved import CELLS, follow_resolved
+from sonoyield.collapse.thermo_range import thermo_range
 from sonoyield.collapse.thresholds import mechanical_index
+from sonoyield.collapse.uniformity import uniformity_of
 from sonoyield.collapse.yields import (
-    OXIDANT_FORMULA,
-    Collapse,
-    Counts,
     collapse_of,
     counts_of,
     oxidant_per_collapse,
@@ -31,71 +28,40 @@ from sonoyield.collapse.yields import (
 from sonoyield.describe.gas import ABSORBED, phase_for
 from sonoyield.describe.liquid import LiquidState, liquid_state
 from sonoyield.describe.protocol import Protocol
-from sonoyield.expose.dose import Dose, dose
-from sonoyield.expose.schedule import Driving, driving, pulse_warning
+from sonoyield.expose.dose import dose
+from sonoyield.expose.remarks import FAST_WARNING, remarks_on
+from sonoyield.expose.result import Estimate
+from sonoyield.expose.schedule import driving
 
-SCHEMA = 1
-LIBRARIES = ("cantera", "numba", "numpy", "pydantic", "pint")
-COLD_GAS = 200.0  # K, where the thermo polynomials end below
-NUMBERS = ("collapse", "counts", "energy", "driven", "doses", "oxidant", "ionisation")
-MUCH_NITROGEN = 0.1  # share of the dry gas
-AIR_WARNING = (
-    "A gas of one temperature makes too little in nitrogen and air, whose core is hotter than "
-    "their mean: at 355 kHz, 2 bar, 3 um an independent, radially resolved model gave 23 "
-    "times the OH. Do not rank air against argon by these numbers."
-)
-FAST_WALL = 0.5  # of the sound speed: Keller-Miksis begins to err
+NUMBERS = ("collapse", "counts", "energy", "driven", "doses", "oxidant", "ionisation", "uniformity")
 
 
-@dataclass(frozen=True, eq=False)
-class Estimate:
-    """Everything known about one exposure.
-
-    ``collapse``, ``counts``, ``energy``, ``doses``, ``oxidant`` and ``ionisation`` are ``None``
-    when the numerics failed (``outcome.code.has_numbers`` is false), and ``thermo_range`` empty.
-    ``counts`` in molecules per collapse, by species. ``history`` holds the run itself,
-    ``accuracy`` what was asked of it.
-    """
-
-    protocol: Protocol
-    liquid: LiquidState
-    history: History
-    outcome: Outcome
-    warnings: tuple[str, ...]
-    balance: Balance
-    collapse: Collapse | None
-    counts: dict[str, Counts] | None
-    energy: Energies | None
-    driven: Driving | None
-    doses: dict[str, Dose] | None
-    oxidant: Dose | None
-    mechanical_index: float | None
-    accuracy: Accuracy
-    thermo_range: tuple[ThermoRange, ...]
-    ionisation: IonisationEstimate | None
-    coupling_difference: dict[str, Any] | None = None
-
-    def as_dict(self) -> dict[str, Any]:
-        """The result by its documented keys, ready for JSON (no not-a-number)."""
-        return _as_dict(self)
-
-
-def estimate(protocol: Protocol, both: bool = False, accuracy: Accuracy | None = None) -> Estimate:
+def estimate(
+    protocol: Protocol,
+    both: bool = False,
+    accuracy: Accuracy | None = None,
+    fast: bool = False,
+) -> Estimate:
     """Drive the protocol's bubble through its collapses and count what it makes.
 
-    With ``both`` the other coupling is run too and its difference reported. Raises
+    The headline is the resolved bubble, with the well-mixed gas in Cantera's reactor beside it;
+    with ``fast``, or where the protocol asks for a mixed interior, it is the well-mixed gas alone.
+    With ``both`` the reactor's other coupling is run too and its difference reported. Raises
     ``FileNotFoundError`` when a shipped mechanism is not installed.
     """
     accuracy = accuracy or Accuracy()
     liquid = liquid_of(protocol)
     bubble = bubble_of(protocol, liquid)
-    history = _run(bubble, protocol, protocol.model.coupling, accuracy)
+    mixed = _estimate(protocol, liquid, _run(bubble, protocol, accuracy), accuracy)
+    if both:
+        mixed = _with_other_coupling(mixed, bubble, accuracy)
+    if fast or protocol.model.interior == "mixed":
+        return _labelled(mixed) if fast else mixed
+    history = _resolve(bubble, protocol, accuracy)
     result = _estimate(protocol, liquid, history, accuracy)
-    if not both:
-        return result
-    other = "one_way" if protocol.model.coupling == "two_way" else "two_way"
-    second = _estimate(protocol, liquid, _run(bubble, protocol, other, accuracy), accuracy)
-    return _with_difference(result, second, other)
+    if result.counts is not None and protocol.model.film and protocol.model.uptake:
+        result = _with_film(result)
+    return replace(result, mixed=mixed, coupling_difference=mixed.coupling_difference)
 
 
 def liquid_of(protocol: Protocol) -> LiquidState:
@@ -125,9 +91,35 @@ def bubble_of(protocol: Protocol, liquid: LiquidState) -> Bubble:
     )
 
 
-def _run(bubble: Bubble, protocol: Protocol, coupling: str, accuracy: Accuracy) -> History:
-    run = follow if coupling == "two_way" else follow_one_way
+def _run(
+    bubble: Bubble, protocol: Protocol, accuracy: Accuracy, coupling: str | None = None
+) -> History:
+    """The well-mixed gas."""
+    two_way = (coupling or protocol.model.coupling) == "two_way"
+    run = follow if two_way else follow_one_way
     return run(bubble, protocol.model.collapses, accuracy)
+
+
+def _resolve(bubble: Bubble, protocol: Protocol, accuracy: Accuracy) -> History:
+    model = protocol.model
+    chemistry = None
+    if model.film and model.uptake:
+        chemistry = aqueous_chemistry(
+            bubble.liquid.temperature,
+            protocol.liquid.scavengers,
+            model.oxygen_atom,
+            nitrogen="N2" in bubble.phase.species,
+            dissolved=dissolved_gases(bubble),
+        )
+    return follow_resolved(
+        bubble,
+        model.collapses,
+        accuracy,
+        cells=model.cells or CELLS,
+        chemistry=chemistry,
+        wall=model.wall,
+        temperature_jump=model.temperature_jump,
+    )
 
 
 def _estimate(
@@ -150,6 +142,7 @@ def _estimate(
         none: dict[str, Any] = dict.fromkeys(NUMBERS)
         return Estimate(**common, **none, warnings=(), thermo_range=())
     counts = counts_of(history)
+    uniformity = uniformity_of(history)
     energy = _mean_energies(history)
     driven = driving(protocol.schedule, drive.frequency, windows_per_period(history))
     amounts = {name: one.delivered for name, one in counts.items()}
@@ -161,7 +154,8 @@ def _estimate(
     }
     return Estimate(
         **common,
-        warnings=tuple(_warnings(protocol, liquid, history, collapse, outcome)),
+        warnings=tuple(remarks_on(protocol, liquid, history, collapse, outcome, uniformity)),
+        uniformity=uniformity,
         collapse=collapse,
         counts=counts,
         energy=energy,
@@ -178,44 +172,30 @@ def _mean_energies(history: History) -> Energies:
     return Energies(**{key: sum(w[key] for w in windows) / len(windows) for key in windows[0]})
 
 
-def _warnings(
-    protocol: Protocol, liquid: LiquidState, history: History, collapse: Collapse, outcome: Outcome
-) -> list[str]:
-    found = list(history.bubble.phase.notes)
-    if history.stopped:
-        found.append(
-            f"{len(history.windows)} of {protocol.model.collapses} windows completed: no further "
-            f"main expansion came within {PATIENCE} periods. Yields are means over complete "
-            "windows, or cover the whole run where there is none."
-        )
-    for one in filter(lambda each: each.matters, thermo_range(history)):
-        found.append(
-            f"{one.species} is above the {one.limit_K:.0f} K of its thermo source for "
-            f"{one.time_s:.2g} s, at up to {100 * one.largest_share:.2g} % of the gas."
-        )
-    if (ions := ionisation_of(history)).matters:
-        found.append(_ionisation_warning(ions))
-    mach = collapse.peak_wall_speed_m_s / liquid.sound_speed
-    if outcome.code is not Code.OUT_OF_RANGE and mach > FAST_WALL:
-        found.append(f"The wall reaches Mach {mach:.2f} in the liquid: the radial equation errs.")
-    if collapse.lowest_temperature_K < COLD_GAS:
-        found.append(
-            f"Expansion cools the gas to {collapse.lowest_temperature_K:.0f} K, below the 200 K "
-            "where the thermo data end; heat capacities are held there, and no vapour condenses "
-            "inside the gas."
-        )
-    if protocol.gas.mixture.get("N2", 0.0) > MUCH_NITROGEN and collapse.inertial:
-        found.append(AIR_WARNING)
-    pulses = pulse_warning(protocol.schedule, protocol.drive.frequency)
-    return [*found, pulses] if pulses else found
+def _labelled(mixed: Estimate) -> Estimate:
+    """The well-mixed gas as headline, with the size of its known error."""
+    if mixed.counts is None:
+        return mixed
+    return replace(mixed, warnings=(FAST_WARNING, *mixed.warnings))
 
 
-def _ionisation_warning(ions: IonisationEstimate) -> str:
-    return (
-        f"Ionisation is not modelled. From {ions.onset_temperature_K:.0f} K on more than "
-        f"{100 * THRESHOLD:.0f} % of this gas would be ionised (Saha estimate), and "
-        f"{100 * ions.ionised_share:.2g} % at the {ions.peak_temperature_K:.0f} K reached: the "
-        "true peak is cooler."
+def _with_film(result: Estimate) -> Estimate:
+    """What scavengers catch and what becomes of OH in the liquid, over repeating cycles."""
+    protocol = result.protocol
+    try:
+        found = catches(result.history, protocol.liquid.scavengers, protocol.model.oxygen_atom)
+    except FilmError as error:
+        told = f"The film could not be followed over cycles, so nothing is caught here: {error}"
+        return replace(result, warnings=(*result.warnings, told))
+    return replace(result, in_liquid=found)
+
+
+def _with_other_coupling(result: Estimate, bubble: Bubble, accuracy: Accuracy) -> Estimate:
+    protocol = result.protocol
+    other = "one_way" if protocol.model.coupling == "two_way" else "two_way"
+    history = _run(bubble, protocol, accuracy, other)
+    return _with_difference(
+        result, _estimate(protocol, result.liquid, history, accuracy), other
     )
 
 
@@ -237,63 +217,3 @@ def _with_difference(result: Estimate, second: Estimate, other: str) -> Estimate
     return replace(result, coupling_difference=difference)
 
 
-def _as_dict(result: Estimate) -> dict[str, Any]:
-    def plain(value: Any) -> Any:
-        return None if value is None else asdict(value)
-
-    def each(values: dict[str, Any] | None) -> Any:
-        return None if values is None else {name: asdict(one) for name, one in values.items()}
-
-    oxidant = plain(result.oxidant) or {}
-    table = {
-        "title": result.protocol.title,
-        "version": __version__,
-        "schema": SCHEMA,
-        "warnings": list(result.warnings),
-        "outcome": {"code": str(result.outcome.code), "sentence": result.outcome.sentence},
-        "inputs": _inputs(result),
-        "collapse": plain(result.collapse),
-        "per_collapse": each(result.counts),
-        "energy_per_window_J": plain(result.energy),
-        "balance": {key: _finite(value) for key, value in asdict(result.balance).items()},
-        "driving": plain(result.driven),
-        "per_exposure": each(result.doses),
-        "oxidant": {
-            "mol_per_L": oxidant.get("mol_per_L"),
-            "mol_per_J": oxidant.get("mol_per_J"),
-            "mol": oxidant.get("mol"),
-            "formula": OXIDANT_FORMULA,
-        },
-        "mechanical_index": result.mechanical_index,
-        "thermo_range": [asdict(one) for one in result.thermo_range],
-        "ionisation": plain(result.ionisation),
-        "provenance": _provenance(result),
-    }
-    if result.coupling_difference is not None:
-        table["coupling_difference"] = result.coupling_difference
-    return table
-
-
-def _finite(value: float) -> float | None:
-    """A number for JSON, which knows no infinity: that of a ledger that cannot be added up."""
-    return value if isfinite(value) else None
-
-
-def _inputs(result: Estimate) -> dict[str, Any]:
-    phase = result.history.bubble.phase
-    return result.protocol.dump() | {
-        "liquid_properties": asdict(result.liquid),
-        "mechanism": {"name": phase.name, "sha256": phase.sha256},
-        "accommodation": dict(result.history.bubble.accommodation),
-    }
-
-
-def _provenance(result: Estimate) -> dict[str, Any]:
-    described = json.dumps(result.protocol.dump(), sort_keys=True)
-    return {
-        "input_sha256": hashlib.sha256(described.encode()).hexdigest(),
-        "libraries": {name: version(name) for name in LIBRARIES},
-        "tolerance": result.accuracy.relative,
-        "windows": len(result.history.windows),
-        "counters": result.history.counters,
-    }

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
 
 HISTORY_SUFFIXES = (".csv", ".parquet")
 RESULT_SUFFIXES = (".json", ".csv", ".parquet")
+CHART_SUFFIXES = (".png", ".svg")
 
 
 def to_json(table: dict[str, Any]) -> str:
@@ -31,13 +32,14 @@ def write_result(table: dict[str, Any], path: Path) -> None:
     Raises ``OSError`` with the path as its ``filename``; what stood there is kept then.
     """
     if path.suffix == ".json":
-        _write(path, lambda target: target.write_text(to_json(table) + "\n"))
+        write_whole(path, lambda target: target.write_text(to_json(table) + "\n"))
     elif path.suffix == ".csv":
-        _write(path, lambda target: _write_row(flat(table), target))
+        write_whole(path, lambda target: _write_row(flat(table), target))
     else:
         import pandas as pd
 
-        _write(path, lambda target: pd.DataFrame([flat(table)]).to_parquet(target, index=False))
+        frame = pd.DataFrame([flat(table)])
+        write_whole(path, lambda target: frame.to_parquet(target, index=False))
 
 
 def write_rows(rows: list[dict[str, Any]], path: Path) -> None:
@@ -46,9 +48,9 @@ def write_rows(rows: list[dict[str, Any]], path: Path) -> None:
 
     frame = pd.DataFrame(rows)
     if path.suffix == ".csv":
-        _write(path, lambda target: frame.to_csv(target, index=False))
+        write_whole(path, lambda target: frame.to_csv(target, index=False))
     else:
-        _write(path, lambda target: frame.to_parquet(target, index=False))
+        write_whole(path, lambda target: frame.to_parquet(target, index=False))
 
 
 def write_history(history: History, path: Path) -> None:
@@ -58,9 +60,9 @@ def write_history(history: History, path: Path) -> None:
     """
     frame = history_frame(history)
     if path.suffix == ".csv":
-        _write(path, lambda target: frame.to_csv(target, index=False))
+        write_whole(path, lambda target: frame.to_csv(target, index=False))
     else:
-        _write(path, lambda target: frame.to_parquet(target, index=False))
+        write_whole(path, lambda target: frame.to_parquet(target, index=False))
 
 
 def history_frame(history: History) -> pd.DataFrame:
@@ -94,19 +96,23 @@ def flat(table: dict[str, Any], prefix: str = "") -> dict[str, Any]:
     return row
 
 
-def _write_row(row: dict[str, Any], target: Path) -> None:
-    with target.open("w", newline="") as file:
-        writer = csv.DictWriter(file, list(row))
-        writer.writeheader()
-        writer.writerow(row)
+def write_whole(path: Path, fill: Callable[[Path], object]) -> None:
+    """Let ``fill`` write a temporary file and put it in the place of ``path`` when it is whole.
 
-
-def _write(path: Path, fill: Callable[[Path], object]) -> None:
+    Raises ``OSError`` with the path as its ``filename``; what stood there is kept then.
+    """
     try:
         _fill_and_place(path, fill)
     except OSError as error:  # name the user's file, not the temporary one
         reason = error.strerror or str(error)
         raise OSError(error.errno or errno.EIO, reason, str(path)) from error
+
+
+def _write_row(row: dict[str, Any], target: Path) -> None:
+    with target.open("w", newline="") as file:
+        writer = csv.DictWriter(file, list(row))
+        writer.writeheader()
+        writer.writerow(row)
 
 
 def _fill_and_place(path: Path, fill: Callable[[Path], object]) -> None:

@@ -15,8 +15,9 @@ from sonoyield.describe.gas import ABSORBED, SPARINGLY_SOLUBLE
 
 if TYPE_CHECKING:
     from sonoyield.collapse.bubble import Bubble
+    from sonoyield.collapse.caught import InLiquid
     from sonoyield.describe.protocol import Liquid
-    from sonoyield.expose.estimate import Estimate
+    from sonoyield.expose.result import Estimate
 
 CAUTIONS = (
     "Research estimate, never a treatment prescription. Intense ultrasound heats and destroys "
@@ -34,6 +35,11 @@ def print_estimate(result: Estimate, console: Console) -> None:
     if result.counts is not None:
         console.print(_collapse(result))
         console.print(_counts(result))
+        if result.mixed is not None:
+            console.print(_beside(result, result.mixed))
+        if result.in_liquid is not None:
+            console.print(_in_liquid(result.in_liquid))
+            console.print(_IN_LIQUID_NOTE + "\n")
         console.print(_exposure(result))
         console.print(_EXPOSURE_NOTE + "\n")
         console.print(_energy(result))
@@ -85,11 +91,11 @@ def _assumed(result: Estimate) -> Table:
                            if model.vapour else f"{bubble.radius * 1e6:.4g} um, {mixture}, dry"),
         ("bubbles", f"{protocol.bubbles.number_density:.4g} per m3, all alike, uniform field"),
         ("motion", "Keller-Miksis, spherical"),
-        ("gas", "well mixed, one temperature (a gentle swing comes out 2 to 18 % too stiff); " + (
+        ("gas", _interior(result) + "; " + (
             "Noble-Abel, which also shifts the equilibria" if model.excluded_volume else "ideal")),
         ("chemistry", f"{bubble.phase.name} (SHA-256 {bubble.phase.sha256[:12]}), "
                       f"{len(bubble.phase.species)} species, {model.coupling} coupling"),
-        ("uptake by the liquid", _uptake(bubble) if model.uptake else "none"),
+        ("uptake by the liquid", _uptake(result) if model.uptake else "none"),
         ("accommodation", _accommodation(bubble)),
     ):  # fmt: skip
         table.add_row(what, value)
@@ -102,8 +108,28 @@ def _liquid(liquid: Liquid) -> str:
     return liquid.kind
 
 
-def _uptake(bubble: Bubble) -> str:
+def _interior(result: Estimate) -> str:
+    cells = result.history.cells
+    if cells is None:
+        return "well mixed, one temperature (a gentle swing comes out 2 to 18 % too stiff)"
+    model = result.protocol.model
+    wall = {
+        "liquid_temperature": "wall at the liquid's temperature",
+        "thermal_layer": "the liquid at the wall warms",
+    }[model.wall]
+    jump = ", temperature jump" if model.temperature_jump else ""
+    return f"resolved in {len(cells.faces) - 1} cells at one pressure, {wall}{jump}"
+
+
+def _uptake(result: Estimate) -> str:
+    bubble = result.history.bubble
     held = [name for name in ABSORBED if name in bubble.phase.species]
+    if result.history.cells is not None and result.protocol.model.film:
+        atom = {"persists": "does not react with water", "water": "reacts with water to 2 OH"}
+        return (
+            f"{', '.join(held)}, H2 and O2 by Henry's law into a film of liquid that diffuses and "
+            f"reacts, fresh at the start; O(3P) {atom[result.protocol.model.oxygen_atom]} there"
+        )
     bound = ", ".join(name for name in held if name in SPARINGLY_SOLUBLE)
     return f"{', '.join(held)} held at zero at the wall (an upper bound for {bound})"
 
@@ -125,8 +151,11 @@ def _collapse(result: Estimate) -> Table:
     assert collapse is not None
     mach = collapse.peak_wall_speed_m_s / result.liquid.sound_speed
     table = _table("Collapse", "what", "value", "unit")
+    centre, hottest = collapse.centre_temperature_K, collapse.hottest_temperature_K
     for what, value, unit in (
-        ("peak temperature", f"{collapse.peak_temperature_K:.0f}", "K"),
+        ("peak temperature, mole mean", f"{collapse.peak_temperature_K:.0f}", "K"),
+        ("peak temperature, centre", "-" if centre is None else f"{centre:.0f}", "K"),
+        ("peak temperature, hottest cell", "-" if hottest is None else f"{hottest:.0f}", "K"),
         ("peak pressure", number(collapse.peak_pressure_Pa / 1e5), "bar"),
         ("largest radius", number(collapse.max_radius_m * 1e6, 4), "um"),
         ("smallest radius", number(collapse.min_radius_m * 1e6), "um"),
@@ -134,10 +163,16 @@ def _collapse(result: Estimate) -> Table:
         ("time of peak", number(collapse.time_of_peak_s * 1e6, 5), "us"),
         ("peak wall speed", f"{collapse.peak_wall_speed_m_s:.0f} (Mach {mach:.2f})", "m/s"),
         ("vapour at peak", number(100 * collapse.vapour_fraction_at_peak), "mol %"),
+        ("centre's pressure over wall's (estimate)", _spread(result), "%"),
         ("inertial (2-fold growth)", "yes" if collapse.inertial else "no", "-"),
     ):
         table.add_row(what, value, unit)
     return table
+
+
+def _spread(result: Estimate) -> str:
+    spread = result.uniformity
+    return "-" if spread is None else f"+{100 * spread.pressure_spread:.2g}"
 
 
 def _counts(result: Estimate) -> Table:
@@ -148,6 +183,70 @@ def _counts(result: Estimate) -> Table:
     for name, count in result.counts.items():
         table.add_row(name, number(count.peak), number(count.delivered), number(count.left))
     return table
+
+
+def _beside(result: Estimate, mixed: Estimate) -> Table:
+    """The well-mixed gas in Cantera's reactor beside the headline."""
+    assert result.counts is not None
+    assert result.collapse is not None
+    table = _table(
+        "Beside it: the well-mixed gas (Cantera reactor)", "what", "resolved", "mixed", "ratio"
+    )
+    if mixed.counts is None or mixed.collapse is None:
+        table.add_row(f"no numbers: {mixed.outcome.code}", "", "", "")
+        return table
+    pairs = {
+        "mean peak temperature, K": (
+            result.collapse.peak_temperature_K, mixed.collapse.peak_temperature_K
+        ),
+        "vapour at peak, mol %": (
+            100 * result.collapse.vapour_fraction_at_peak,
+            100 * mixed.collapse.vapour_fraction_at_peak,
+        ),
+    }  # fmt: skip
+    for name in BESIDE:
+        if name in result.counts:
+            pairs[f"{name} delivered"] = (
+                result.counts[name].delivered, mixed.counts[name].delivered
+            )  # fmt: skip
+    for what, (this, that) in pairs.items():
+        digits = 4 if "temperature" in what else 3
+        ratio = this / that if that > 0.0 else None
+        table.add_row(what, number(this, digits), number(that, digits), number(ratio))
+    return table
+
+
+BESIDE = ("OH", "H2O2", "HO2", "NO", "NO2", "HONO")
+
+
+def _in_liquid(film: InLiquid) -> Table:
+    table = _table(
+        "In the liquid, molecules per cycle", "what", "fresh liquid", "repeating in one place"
+    )
+    fresh, repeating = film.fresh, film.repeating
+    for one in film.catches:
+        name = f"caught by {one.scavenger}, {one.mol_per_L * 1e3:.4g} mmol/L"
+        table.add_row(name, number(one.fresh), number(one.repeating))
+        table.add_row("  its supply by diffusion, at most", "", number(one.supply_limit))
+    for what, key in (
+        ("OH that came in", "OH_entered"),
+        ("OH that became H2O2", "OH_to_H2O2"),
+        ("OH that met nitrogen oxides", "OH_to_nitrogen"),
+        ("OH lost to water, O2, HO2", "OH_lost"),
+        ("H2O2, in and made", "H2O2"),
+        ("nitrite", "nitrite"),
+        ("nitrate", "nitrate"),
+    ):
+        values = getattr(fresh, key), getattr(repeating, key)
+        if "nitr" not in key or any(abs(value) >= 1.0 for value in values):
+            table.add_row(what, *(number(value) for value in values))
+    return table
+
+
+_IN_LIQUID_NOTE = (
+    "Streaming and the bubble's own motion renew the liquid: the truth lies between fresh and "
+    "repeating. The repeating cycle is the headline (`caught`)."
+)
 
 
 def _exposure(result: Estimate) -> Table:
