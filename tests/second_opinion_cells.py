@@ -26,7 +26,6 @@ R, U, P, N = range(4)  # state: radius m, speed m/s, pressure / ambient, then th
 FINE = 0.9  # of the grid's grading towards the wall
 WALL_ROUNDS = 8  # Newton rounds for the mole fractions at the wall
 TRIAL = 1e-3  # share of a cell that stays free of covolume in a trial state
-NOISE = 1e-10  # mole fraction
 NUDGE = 1e-7  # relative, of finite differences
 
 
@@ -103,6 +102,8 @@ class Cells(mixed._Bubble):
         tables = [np.concatenate([one, one[-1:].repeat(most - len(one), 0)]) for one in tables]
         self.nasa = np.array(tables)
         self.own = np.arange(self.count)
+        sides = np.array([gas.reactant_stoich_coeffs, gas.product_stoich_coeffs])
+        self.joining = sides * (sides.sum(axis=1) > 1.5)[:, None]  # of more than one particle
 
     def tolerances(self) -> Array:
         """Absolute tolerances: 1e-12 of the contents for each amount, as the mixed one else."""
@@ -153,17 +154,19 @@ class Cells(mixed._Bubble):
     def production(self, t: Array, n: Array, volume: Array, pressure: float) -> Array:
         """Production (mol/s) in each cell at its true density.
 
-        Negative traces react no faster than noise does: beside radicals they let those multiply.
+        A negative trace may split, as its noise then fades; it joins nothing, since beside a
+        radical it would let that multiply.
         """
         forward = np.empty((len(t), self.net.shape[1]))
         reverse = np.empty_like(forward)
-        density = n @ self.mass / volume
-        x = np.maximum(n / n.sum(axis=1)[:, None], -NOISE)
+        density, x = n @ self.mass / volume, n / n.sum(axis=1)[:, None]
         for i in range(len(t)):
             self.gas.set_unnormalized_mole_fractions(x[i])
             self.gas.TD = t[i], density[i]
             forward[i] = self.gas.forward_rates_of_progress
             reverse[i] = self.gas.reverse_rates_of_progress
+        forward[(n < 0.0) @ self.joining[0] > 0.0] = 0.0
+        reverse[(n < 0.0) @ self.joining[1] > 0.0] = 0.0
         if self.dense:
             free = np.maximum(volume - n @ self.covolume, TRIAL * volume)
             activity = np.log(volume / free)[:, None]

@@ -29,8 +29,9 @@ COMMAND = (sys.executable, "-c", "from sonoyield.cli import main; main()")
 # Documented: design of the result, "Numbers that must come out"; more are said in the README.
 KEYS = [
     "title", "version", "schema", "warnings", "outcome", "inputs", "collapse", "per_collapse",
-    "energy_per_window_J", "balance", "uniformity", "caught", "in_liquid", "driving", "per_exposure", "oxidant", "mechanical_index",
-    "thermo_range", "ionisation", "provenance", "mixed",
+    "energy_per_window_J", "balance", "uniformity", "caught", "in_liquid", "driving",
+    "per_exposure", "oxidant", "mechanical_index", "thermo_range", "ionisation", "provenance",
+    "mixed",
 ]  # fmt: skip
 COLLAPSE = {
     "peak_temperature_K", "peak_pressure_Pa", "max_radius_m", "min_radius_m",

@@ -11,7 +11,6 @@ import numpy as np
 import pytest
 
 from sonoyield.collapse import cells as c
-from sonoyield.collapse import cells_newton as newton
 from sonoyield.collapse import resolved
 from sonoyield.collapse.aqueous import FILM_OF_GAS, AqueousChemistry, aqueous_chemistry
 from sonoyield.collapse.bubble import Bubble
@@ -131,12 +130,12 @@ def test_uniform_bubble_without_sound_stays_as_it_is(name: str) -> None:
     stage = hot_stage(quiet, FEW, None)
     state = at_rest(stage, quiet)
     rates = np.empty(stage.size)
-    c.rates(0.0, state, stage.gas, stage.film, stage.work, rates)
+    stage.rates(0.0, state, rates)
     per_second = rates / (stage.floors + np.abs(state)) * quiet.period
     assert np.abs(np.delete(per_second, range(c.LEDGER, c.CROSSED))).max() < 1e-9
     warmer = state.copy()
     warmer[stage.start + stage.count] += 1.0  # of the innermost cell: now it must not rest
-    c.rates(0.0, warmer, stage.gas, stage.film, stage.work, rates)
+    stage.rates(0.0, warmer, rates)
     assert rates[stage.start + stage.count] < 0.0 < rates[stage.start + 2 * stage.count + 1]
     assert rates[c.SPEED] > 0.0
 
@@ -194,14 +193,12 @@ def sizes(stage: Stage, state: Array) -> Array:
 
 
 def prepared(stage: Stage, time: float, state: Array) -> None:
-    newton.evaluate(
-        time, state, stage.gas, stage.film, stage.work, stage.blocks, np.empty(stage.size)
-    )
+    stage.evaluate(time, state, np.empty(stage.size))
 
 
 def times(stage: Stage, x: Array) -> Array:
     out = np.empty(stage.size)
-    newton.multiply(stage.blocks, stage.film.gas_index, x, out)
+    stage.multiply(x, out)
     return out
 
 
@@ -211,11 +208,11 @@ def test_solver_inverts_what_is_multiplied(film: bool, gamma: float) -> None:
     """(I - gamma J) applied to a solution gives back the right-hand side."""
     stage, time, state = at_peak(ARGON, film)
     prepared(stage, time, state)
-    newton.factorise(gamma, stage.blocks, stage.film.gas_index)
+    stage.factorise(gamma)
     size = sizes(stage, state)
     right = np.random.default_rng(5).normal(size=stage.size) * size
     x = np.empty(stage.size)
-    newton.solve(gamma, stage.blocks, stage.film.gas_index, right, x)
+    stage.solve(gamma, right, x)
     moved = gamma * times(stage, x)
     scale = size + np.abs(x) + np.abs(moved)
     assert np.abs((x - moved - right) / scale).max() < 1e-8
@@ -250,7 +247,7 @@ def test_newton_with_this_jacobian_converges(name: str, film: bool) -> None:
 
 def rates_at(stage: Stage, time: float, state: Array) -> Array:
     out = np.empty(stage.size)
-    c.rates(time, state, stage.gas, stage.film, stage.work, out)
+    stage.rates(time, state, out)
     return out
 
 
@@ -259,10 +256,10 @@ def test_jacobian_and_solver_keep_atoms(film: bool) -> None:
     """What one cell loses another gains or the wall lets through, whatever the state's change."""
     stage, time, state = at_peak(AIR, film)
     prepared(stage, time, state)
-    newton.factorise(1e-11, stage.blocks, stage.film.gas_index)
+    stage.factorise(1e-11)
     x = np.random.default_rng(7).normal(size=stage.size) * sizes(stage, state)
     solved = np.empty(stage.size)
-    newton.solve(1e-11, stage.blocks, stage.film.gas_index, x, solved)
+    stage.solve(1e-11, x, solved)
     atoms = stage.bubble.phase.atoms
     for change in (times(stage, x), solved - x):
         moles = change[stage.start : stage.wet].reshape(stage.cells, -1)[:, : stage.count]

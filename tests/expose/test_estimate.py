@@ -118,4 +118,5 @@ def test_inputs_hold_every_default(result: Estimate) -> None:
     assert inputs["model"]["coupling"] == "two_way"
     assert inputs["liquid"]["ambient_pressure"] == 101325.0
     assert inputs["liquid_properties"]["density"] == pytest.approx(997.05, rel=1e-4)  # IAPWS-95
-    assert set(inputs["accommodation"]) == {"water", "radicals", "OH", "H", "O", "HO2", "H2O2", "O3"}
+    uptaken = {"OH", "H", "O", "HO2", "H2O2", "O3"}
+    assert set(inputs["accommodation"]) == {"water", "radicals"} | uptaken

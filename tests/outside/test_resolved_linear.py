@@ -86,7 +86,7 @@ def linearised(one: Stage) -> complex:
         for sign in (1.0, -1.0):
             state = rest.copy()
             state[at] += sign * step
-            c.rates(0.0, state, one.gas, one.film, one.work, out)
+            one.rates(0.0, state, out)
             found.append(np.append(out[warmth], one.work.whole[c.PRESSURE]))
         return np.asarray((found[0] - found[1]) / (2.0 * step))
 

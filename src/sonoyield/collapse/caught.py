@@ -20,6 +20,8 @@ from sonoyield.collapse import cells as c
 from sonoyield.collapse.aqueous import FILM_OF_GAS, AqueousChemistry, aqueous_chemistry
 from sonoyield.collapse.aqueous_tables import henry
 from sonoyield.collapse.bubble import Bubble
+from sonoyield.collapse.cells_flows import through_wall
+from sonoyield.collapse.cells_rates import volumes
 from sonoyield.collapse.exchange import CROSSES, SURFACE
 from sonoyield.collapse.film import (
     FilmCourse,
@@ -238,8 +240,8 @@ def _beside_wall(
         state[c.RADIUS] = radius[p]
         inside[:, :count] = moles[p]
         inside[:, count] = temperature[p]
-        c._volumes(state, gas, work)
-        c._through_wall(state, gas, film, work, unused)
+        volumes(state, gas, work)
+        through_wall(state, gas, film, work, unused)
         density = 1.0 / work.whole[c.BY_SURFACE]
         for s in range(places.size):
             k = places[s]

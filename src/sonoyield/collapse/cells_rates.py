@@ -25,7 +25,7 @@ from sonoyield.describe.gas import GAS_CONSTANT, Array
 @inner
 def rates(time: float, state: Array, gas: c.Gas, film: c.Film, work: c.Work, out: Array) -> None:
     """Fill ``out`` with the time derivatives of ``state``; not-a-number for one not physical."""
-    if not _volumes(state, gas, work):
+    if not volumes(state, gas, work):
         out[:] = nan
         return
     _contents(state, gas, work, out)
@@ -36,7 +36,7 @@ def rates(time: float, state: Array, gas: c.Gas, film: c.Film, work: c.Work, out
 
 
 @inner
-def _volumes(state: Array, gas: c.Gas, work: c.Work) -> bool:
+def volumes(state: Array, gas: c.Gas, work: c.Work) -> bool:
     """Pressure, volumes and faces of the cells; whether the state is physical."""
     cells, count = work.fractions.shape
     radius = state[c.RADIUS]

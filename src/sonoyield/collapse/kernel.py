@@ -46,3 +46,9 @@ def call(_context: Any, address: Any, arguments: Any) -> Any:
         return context.get_dummy_value()
 
     return types.none(address, arguments), lower
+
+
+@outer
+def reach(address: int, arguments: Any) -> None:
+    """As ``call``, from Python."""
+    call(address, arguments)

@@ -68,7 +68,8 @@ def outcome_of(history: History, collapse: Collapse, balance: Balance) -> Outcom
         return Outcome(
             Code.LEDGER_OPEN,
             f"Energy closes to {balance.energy_error:.1e} of the work "
-            f"(limit {balance.energy_limit:.0e}) and elements to {balance.element_error:.1e}; no number is given.",
+            f"(limit {balance.energy_limit:.0e}) and elements to {balance.element_error:.1e} "
+            f"(limit {balance.element_limit:.0e}); no number is given.",
         )
     if history.stopped == NO_MAXIMUM and not history.windows and collapse.inertial:
         return Outcome(

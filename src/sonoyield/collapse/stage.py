@@ -8,9 +8,11 @@ import numpy as np
 
 from sonoyield.collapse import cells as c
 from sonoyield.collapse import cells_bdf as bdf
+from sonoyield.collapse import cells_elimination as elimination
 from sonoyield.collapse import cells_newton as newton
 from sonoyield.collapse import equations as eq
 from sonoyield.collapse.bubble import CONTENTS_FLOOR, Bubble
+from sonoyield.collapse.kernel import address_of, reach
 from sonoyield.collapse.kinetics_fallback import cell_kinetics
 from sonoyield.describe.gas import Array
 
@@ -90,6 +92,30 @@ class Stage:
     def last_step(self) -> float:
         """Size of the step to come, s."""
         return float(self.memory.numbers[bdf.STEP])
+
+    def rates(self, time: float, state: Array, out: Array) -> None:
+        """Fill ``out`` (S,) with the rates of change of ``state`` (S,) at ``time`` s."""
+        reach(self.calls.rates, (time, state, self.gas, self.film, self.work, out))
+
+    def evaluate(self, time: float, state: Array, out: Array) -> None:
+        """As ``rates``, and find the Jacobian J there for the next three."""
+        given = (time, state, self.gas, self.film, self.work, self.blocks, self.calls.rates, out)
+        reach(self.calls.evaluate, given)
+
+    def factorise(self, gamma: float) -> None:
+        """Make ready to solve with I - ``gamma`` J."""
+        given = (gamma, self.blocks, self.film.gas_index, self.calls.substitute)
+        reach(self.calls.factorise, given)
+
+    def solve(self, gamma: float, right: Array, out: Array) -> None:
+        """Fill ``out`` (S,) with the x that solves (I - ``gamma`` J) x = ``right`` (S,)."""
+        given = (gamma, self.blocks, self.film.gas_index, self.calls.substitute, right, out)
+        reach(self.calls.solve, given)
+
+    def multiply(self, x: Array, out: Array) -> None:
+        """Fill ``out`` (S,) with J ``x`` (S,)."""
+        given = (self.blocks, self.film.gas_index, x, out)
+        reach(address_of(elimination.multiply, *given), given)
 
     @property
     def counts(self) -> dict[str, int]:
