@@ -55,7 +55,9 @@ def test_net_production_is_what_the_integrators_states_say(file, coupling):
     """
     protocol = Protocol.load(file)
     model = protocol.model.model_copy(update={"coupling": coupling})
-    run = module.estimate(protocol.model_copy(update={"model": model}), accuracy=FINE).history
+    run = module.estimate(
+        protocol.model_copy(update={"model": model}), accuracy=FINE, fast=True
+    ).history
     least = 10.0 * 1e-6 * CONTENTS_FLOOR * float(run.bubble.moles.sum()) * AVOGADRO
     for species in ("OH", "H2O2", "HO2", "H", "O", "H2", "H2O"):
         k = run.bubble.phase.index(species)
@@ -149,7 +151,7 @@ def test_command_prints_tables_json_and_files(tmp_path):
 
 def test_numerics_that_failed_exit_with_3_and_no_numbers(monkeypatch):
     protocol = Protocol.load(ARGON)
-    stopped = module.estimate(protocol, accuracy=Accuracy(steps=50))
+    stopped = module.estimate(protocol, accuracy=Accuracy(steps=50), fast=True)
     monkeypatch.setattr(module, "estimate", lambda _, **__: stopped)
     answer = runner.invoke(app, ["explain", str(ARGON), "--json"])
     assert answer.exit_code == 3

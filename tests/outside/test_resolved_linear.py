@@ -27,7 +27,6 @@ from sonoyield.collapse.follow import Accuracy
 from sonoyield.collapse.history import History
 from sonoyield.collapse.resolved import (
     CELLS,
-    NARROWING,
     NO_FILM,
     follow_resolved,
     mass_fractions,
@@ -63,9 +62,18 @@ def dry(
     )  # fmt: skip
 
 
-def stage(bubble: Bubble, cells: int = CELLS, narrowing: float = NARROWING) -> Stage:
+def enough(radius: float) -> int:
+    """Cells for 0.5 %: the default ones up to the largest radius that a protocol may ask for.
+
+    A bubble of 500 um is beyond it; with 20 cells its damping is 0.85 % off in air, 0.92 % in argon.
+    """
+    return CELLS if radius <= 200e-6 else 32
+
+
+def stage(bubble: Bubble, cells: int | None = None, narrowing: float | None = None) -> Stage:
     there = {*np.flatnonzero(bubble.moles), bubble.phase.index("H2O")}
-    faces = mass_fractions(cells, narrowing)
+    cells = cells or enough(bubble.radius)
+    faces = mass_fractions(cells) if narrowing is None else mass_fractions(cells, narrowing**cells)
     return Stage(bubble, sorted(there), faces, False, bubble.species, NO_FILM)
 
 
@@ -161,7 +169,7 @@ def test_rows_with_their_own_properties(name: str) -> None:
 @pytest.mark.parametrize("gas", MIXTURES)
 @pytest.mark.parametrize(("radius", "frequency"), SIZES)
 def test_exponent_and_damping(gas: str, radius: float, frequency: float) -> None:
-    """Largest errors found: exponent 0.042 %, damping 0.29 %, both of argon at 500 um."""
+    """Largest errors found: exponent 0.03 %, damping 0.4 %."""
     bubble = dry(gas, radius, frequency)
     stiff, damps = errors(linearised(stage(bubble)), closed(*own(bubble)))
     assert abs(stiff) < 0.1 * TIGHT
@@ -256,7 +264,7 @@ def test_driven_bubble(gas: str, radius: float, frequency: float) -> None:
     """
     thick = replace(WATER, viscosity=WATER.density * radius**2 * 2.0 * pi * frequency)
     bubble = dry(gas, radius, frequency, 300.0, thick)
-    history = follow_resolved(bubble, 20, Accuracy(relative=1e-7, tighten=0))
+    history = follow_resolved(bubble, 20, Accuracy(relative=1e-7, tighten=0), enough(radius))
     assert not history.stopped
     found, expected = fitted(history, 10), closed(*own(bubble))
     stiff, damps = errors(found, expected)

@@ -12,9 +12,10 @@ from hypothesis import strategies as st
 from typer.testing import CliRunner
 
 from sonoyield import Protocol, estimate
-from sonoyield.cli import BAD_INPUT, app
+from sonoyield.cli import app
 from sonoyield.collapse.outcome import Code
 from sonoyield.describe.liquid import liquid_state
+from sonoyield.targets import BAD_INPUT
 
 ATMOSPHERE = 101325.0  # Pa
 SPECIES = ("AR", "HE", "KR", "XE", "O2", "N2", "H2")

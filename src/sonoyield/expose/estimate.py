@@ -59,7 +59,8 @@ def estimate(
         return _labelled(mixed) if fast else mixed
     history = _resolve(bubble, protocol, accuracy)
     result = _estimate(protocol, liquid, history, accuracy)
-    if result.counts is not None and protocol.model.film and protocol.model.uptake:
+    wet = history.cells is not None and protocol.model.film and protocol.model.uptake
+    if result.counts is not None and wet:
         result = _with_film(result)
     return replace(result, mixed=mixed, coupling_difference=mixed.coupling_difference)
 
