@@ -95,6 +95,7 @@ class Tables:
         self.collisions = read_rows(folder / "collision_limit.csv")
         self.aqueous = read_rows(folder / "aqueous_reactions.csv")
         self.dissolved = read_rows(folder / "aqueous_transport.csv")
+        self.scavengers = read_rows(folder / "scavengers.csv")
         self.intervals: dict[str, list[Row]] = {}
         for row in read_rows(folder / "thermo_coefficients.csv"):
             self.intervals.setdefault(row["species"], []).append(row)
@@ -333,6 +334,13 @@ SOURCES: dict[str, tuple[str, str, dict[str, str]]] = {
         "form": "T_form", "parameters": "T_params", "f": "uncertainty_factor",
         "other values": "alternatives", "source": "source", "provenance": "provenance",
         "note": "note"}),
+    "Scavengers": ("scavengers", "Names that `liquid.scavengers` knows, with the rate constant of "
+        "OH and the diffusivity at 25 degC. The rate constant is used as it is at any temperature.",
+        {"name": "name", "reaction": "reaction", "k (L/mol/s)": "k_25C_L_mol_s",
+        "f": "k_uncertainty_factor", "other values": "k_alternatives", "source": "k_source",
+        "provenance": "k_provenance", "D (m2/s)": "diffusivity_25C_m2_s",
+        "f of D": "diffusivity_uncertainty_factor", "source of D": "diffusivity_source",
+        "provenance of D": "diffusivity_provenance", "note": "note"}),
 }  # fmt: skip
 
 
