@@ -9,8 +9,8 @@ from sonoyield import Protocol, estimate
 
 STATUS = Path("/proc/self/statm")
 LIMIT = 20e6  # bytes, for a thousand collapses
-# coupling, runs, collapses each; the slower ones fewer
-CASES = [("two_way", 1000, 1), ("one_way", 200, 1), ("two_way", 5, 20)]
+# coupling of the mixed gas, or resolved; runs, collapses each; the slower ones fewer
+CASES = [("two_way", 1000, 1), ("one_way", 200, 1), ("two_way", 5, 20), ("resolved", 60, 1)]
 PROTOCOL = {
     "drive": {"frequency": "355 kHz", "pressure": "2 bar"},
     "schedule": {"duration": "10 min"},
@@ -29,7 +29,9 @@ def resident() -> int:
 @pytest.mark.skipif(not STATUS.exists(), reason="reads /proc")
 @pytest.mark.parametrize(("coupling", "runs", "collapses"), CASES)
 def test_flat(coupling: str, runs: int, collapses: int, capfd: pytest.CaptureFixture[str]) -> None:
-    model = {"interior": "mixed", "coupling": coupling, "collapses": collapses}
+    model: dict[str, object] = {"collapses": collapses}
+    if coupling != "resolved":
+        model |= {"interior": "mixed", "coupling": coupling}
     protocol = Protocol.from_dict(PROTOCOL | {"model": model})
     for _ in range(min(runs, 20)):
         estimate(protocol).as_dict()

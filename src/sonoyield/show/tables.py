@@ -227,6 +227,8 @@ def _in_liquid(film: InLiquid) -> Table:
     for one in film.catches:
         name = f"caught by {one.scavenger}, {one.mol_per_L * 1e3:.4g} mmol/L"
         table.add_row(name, number(one.fresh), number(one.repeating))
+        for cycles, then in list(zip(one.after_cycles, one.molecules_then, strict=True))[-1:]:
+            table.add_row(f"  after {cycles:.0e} cycles in one place", "", number(then))
         table.add_row("  its supply by diffusion, at most", "", number(one.supply_limit))
     for what, key in (
         ("OH that came in", "OH_entered"),
