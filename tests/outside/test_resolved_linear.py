@@ -65,7 +65,8 @@ def dry(
 def enough(radius: float) -> int:
     """Cells for 0.5 %: the default ones up to the largest radius that a protocol may ask for.
 
-    A bubble of 500 um is beyond it; with 20 cells its damping is 0.85 % off in air, 0.92 % in argon.
+    A bubble of 500 um is beyond it; with 20 cells its damping is 0.85 % off in air and 0.92 % in
+    argon.
     """
     return CELLS if radius <= 200e-6 else 32
 
