@@ -4,8 +4,9 @@ Cells of fixed share of the bubble's volume, through whose faces the gas flows, 
 product's cells of gas; the equations are in ``second_opinion_cells.py``.  Cantera gives the rates
 cell by cell, CVODE (scikit-sundae) integrates.  Nothing of the product is imported.
 
-Slow: at 355 kHz, 2 bar, 3 um, 40 cells and `rtol` 1e-7 argon takes about half a minute, air one and
-a half.  At 1e-6 the energy closes to some 3e-4 of the work only, and OH in air is 0.7 % off.
+Slow: at 355 kHz, 2 bar, 3 um, 40 cells and `rtol` 1e-7 argon takes about 20 s, air 45 s, on a quiet
+core and with one BLAS thread.  At 1e-6 the energy closes to some 2e-4 of the work only, and OH in
+air is 0.5 % off.
 """
 
 import time

@@ -12,11 +12,13 @@ import numpy as np
 from numba import njit
 
 from sonoyield.collapse import cells as c
+from sonoyield.collapse import cells_bdf as bdf
 from sonoyield.collapse import cells_newton as newton
 from sonoyield.collapse.aqueous import aqueous_chemistry
 from sonoyield.collapse.bubble import Bubble
 from sonoyield.collapse.follow import follow
 from sonoyield.collapse.history import History
+from sonoyield.collapse.kernel import call
 from sonoyield.collapse.ledger import balance
 from sonoyield.collapse.resolved import CELLS, follow_resolved
 from sonoyield.collapse.stage import Stage
@@ -32,8 +34,9 @@ class ResolvedRow:
     """One case of the resolved gas: medians of the same rounds, ratios, and where time goes.
 
     ``to_baseline``: its time over that of the plain mixed baseline; ``to_mixed``: over that of the
-    product's mixed gas. ``*_share``: calls times the cost of one at states of the run, over the
-    whole, in processor time; what is left are norms, predictions, record and setting up.
+    product's mixed gas. ``*_share``: calls of the reacting stage times the cost of one at states of
+    it, over the whole run, in processor time; what is left are norms, predictions, record, setting
+    up and the cold stage.
     """
 
     case: str
@@ -70,7 +73,7 @@ def measure(
         mixed.append(seconds_of(lambda: follow(one)))
         baseline.append(baseline_seconds())
     seconds, whole_s, mixed_s = median(resolved), median(baseline), median(mixed)
-    counters, costs = history.counters, costs_of(stage, states)
+    counters, hot, costs = history.counters, stage.counts, costs_of(stage, states)
     spent = processor(run)
     oh = one.phase.index("OH")
     return ResolvedRow(
@@ -86,10 +89,10 @@ def measure(
         evaluations=counters["evaluations"],
         jacobians=counters["jacobians"],
         factorisations=counters["factorisations"],
-        rates_share=counters["evaluations"] * costs["rates"] / spent,
-        jacobian_share=counters["jacobians"] * costs["jacobian"] / spent,
-        factorisation_share=counters["factorisations"] * costs["factorisation"] / spent,
-        solution_share=counters["evaluations"] * costs["solution"] / spent,
+        rates_share=hot["evaluations"] * costs["rates"] / spent,
+        jacobian_share=hot["jacobians"] * costs["jacobian"] / spent,
+        factorisation_share=hot["factorisations"] * costs["factorisation"] / spent,
+        solution_share=hot["evaluations"] * costs["solution"] / spent,
         energy_error=balance(history).energy_error,
         oh=delivered(history, oh),
         mixed_oh=delivered(follow(one), oh),
@@ -121,30 +124,32 @@ def costs_of(stage: Stage, states: np.ndarray) -> dict[str, float]:
     """Seconds of one call of each compiled part of a step, over states of the run."""
     some = np.ascontiguousarray(states[:: max(1, len(states) // PART_CALLS)])
     out, costs = np.zeros(stage.size), {}
+    fixed = (stage.gas, stage.film, stage.work, stage.blocks, stage.calls, out)
     for which, name in enumerate(PARTS):
-        call = partial(
-            repeat, which, some, stage.gas, stage.film, stage.work, stage.blocks, out
-        )  # fmt: skip
-        call()
-        costs[name] = processor(call) / len(some)
+        call_all = partial(repeat, which, some, *fixed)
+        call_all()
+        costs[name] = processor(call_all) / len(some)
     return costs
 
 
 @njit(error_model="numpy")
 def repeat(
     which: int, states: np.ndarray, gas: c.Gas, film: c.Film, work: c.Work, blocks: newton.Blocks,
-    out: np.ndarray,
+    calls: bdf.Calls, out: np.ndarray,
 ) -> None:  # fmt: skip
-    """Call one of ``PARTS`` at each state, without what a call from Python costs."""
+    """Call one of ``PARTS`` at each state as a step does, without what a call from Python costs."""
+    known = (SCALED_STEP, blocks, film.gas_index, calls.substitute)
     for i in range(states.shape[0]):
         if which == 0:
-            c.rates(0.0, states[i], gas, film, work, out)
+            call(calls.rates, (0.0, states[i], gas, film, work, out))
         elif which == 1:
-            newton.evaluate(0.0, states[i], gas, film, work, blocks, out)
+            call(calls.evaluate, (0.0, states[i], gas, film, work, blocks, calls.rates, out))
         elif which == 2:
-            newton.factorise(SCALED_STEP, blocks, film.gas_index)
+            call(calls.factorise, known)
         else:
-            newton.solve(SCALED_STEP, blocks, film.gas_index, states[i], out)
+            call(calls.solve, (
+                SCALED_STEP, blocks, film.gas_index, calls.substitute, states[i], out,
+            ))  # fmt: skip
 
 
 def seconds_of(work: Callable[[], object]) -> float:

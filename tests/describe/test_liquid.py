@@ -50,6 +50,9 @@ def test_water_against_iapws95(temperature: float) -> None:
     assert ours.viscosity == pytest.approx(one_atm.mu, rel=5e-3)
     assert ours.surface_tension == pytest.approx(boiling.sigma, rel=5e-3)
     assert ours.latent_heat == pytest.approx((dew.h - boiling.h) * 1e3, rel=1e-3)
+    # No rows either: 0.1 % and 0.05 % are taken.
+    assert ours.thermal_conductivity == pytest.approx(one_atm.k, rel=1e-3)
+    assert ours.heat_capacity == pytest.approx(one_atm.cp * 1e3, rel=5e-4)
 
 
 # IAPWS R7-97, R1-76(2014), R6-95 and R12-08 at 101325 Pa, computed with the iapws package.
@@ -133,6 +136,8 @@ def test_salt_moves_each_property_the_right_way() -> None:
         liquid.surface_tension_iapws2014,
         liquid.saturation_pressure_wagner_pruss,
         liquid.latent_heat,
+        liquid.thermal_conductivity_iapws2008,
+        liquid.heat_capacity,
         water,
     ],
 )

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import csv
 import sys
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from pathlib import Path
 
 import numpy as np
@@ -23,7 +23,7 @@ from sonoyield.collapse.ledger import balance
 from sonoyield.collapse.outcome import Code, outcome_of
 from sonoyield.collapse.resolved import follow_resolved
 from sonoyield.collapse.yields import collapse_of, counts_of
-from sonoyield.describe.gas import phase_for
+from sonoyield.describe.gas import AVOGADRO, phase_for
 from sonoyield.describe.gases import COMPOSITIONS
 from sonoyield.describe.liquid import water
 
@@ -105,13 +105,20 @@ def _wanted(history: History) -> bool:
 
 
 def _delivered(model: str, history: History) -> Case:
-    counts = counts_of(history)
-    nitrogen = sum(counts[name].delivered for name in NITROGEN if name in counts)
-    found = {"OH": counts["OH"].delivered, "H2O2": counts["H2O2"].delivered, "NOx": nitrogen}
+    """Molecules that crossed, net: negative where the film gave more back than it took."""
+    span = history.spans[0]
+    found = {name: _net(history, [name], span) for name in ("OH", "H2O2")}
+    found["NOx"] = _net(history, NITROGEN, span)
     return {
         **{f"{model}_{name}": _round(value) for name, value in found.items()},
         f"{model}_ended": history.stopped or "complete",
     }
+
+
+def _net(history: History, names: Iterable[str], span: tuple[int, int]) -> float:
+    species = history.bubble.phase.species
+    kept = [species.index(name) for name in names if name in species]
+    return float((history.crossed[span[1]] - history.crossed[span[0]])[kept].sum()) * AVOGADRO
 
 
 def _round(value: float) -> str:

@@ -1,6 +1,7 @@
 """Random valid bubbles through the resolved gas with its film: each ends, with an outcome.
 
-Drawn by a fixed seed over the ranges of the protocol; nothing is drawn and thrown away.
+Drawn by a fixed seed over the ranges of the protocol; nothing is drawn and thrown away. What is
+established of the 200 is that at least 193 end with numbers.
 """
 
 from __future__ import annotations
@@ -31,7 +32,9 @@ ACCOMMODATION = ("water", "radicals", "OH", "H", "O", "HO2", "H2O2", "O3")
 SWITCHES = ("excluded_volume", "vapour", "uptake")
 SEED, BUBBLES = 20260501, 200
 QUICK = (0, 1, 2, 3, 5, 7, 8, 9, 10, 11, 12, 13)  # positions in the same draw
-LEAST_SHARE_WITH_NUMBERS = 0.9
+# Measured in one run of all of them on a loaded core: 193 have numbers. Without: 36, 76, 86, 135
+# and 139 (integration failed), 65 (steps) and 129 (time). None is left out of the count.
+MOST_WITHOUT_NUMBERS = 7
 Data = dict[str, Any]
 
 
@@ -144,4 +147,4 @@ def test_every_random_bubble_ends_with_an_outcome(capfd: pytest.CaptureFixture[s
         print(f"\n{dict(outcomes)}; slowest (s, which): {sorted(times)[:-6:-1]}")
         print("\n".join(failed))
     assert outcomes.total() == BUBBLES
-    assert len(failed) <= (1.0 - LEAST_SHARE_WITH_NUMBERS) * BUBBLES
+    assert len(failed) <= MOST_WITHOUT_NUMBERS

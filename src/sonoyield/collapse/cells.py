@@ -5,10 +5,11 @@ for the uniform pressure), so that a compression moves no gas through their face
 amounts n_k and a temperature; Noble-Abel gas, chemistry at the true density. Between cells:
 conduction and mixture-averaged diffusion with a mass correction (Kee, Coltrin, Glarborg 2003,
 ch. 12; no thermal diffusion). At the wall: half a cell of gas, the kinetic resistance of the
-surface and, for what a liquid film follows, half a cell of liquid, in series.
+surface and, for what a liquid film follows, half a cell of liquid, in series. Where the liquid at
+the wall warms, its warming (K) spreads in the film as one more of what is dissolved.
 
 State: radius, wall speed, the ledger's integrals, what has crossed (K), then for each cell its
-amounts (K) and temperature, then the film's concentrations (M, L).
+amounts (K) and temperature, then the film's concentrations (M, L), the warming last among them.
 """
 
 from __future__ import annotations
@@ -32,7 +33,24 @@ AMOUNT, WEIGHT, COVOLUMES, VOLUME, CAPACITY, HEATING, GAIN, CENTRE = range(8)
 AREA, HEAT_CONDUCTANCE, DRIFT, LEANING, LEANING_HEAT = range(5)
 # Entries of ``Work.whole``.
 # TRIAL multiplies the pressure (1, but for the Jacobian).
-PRESSURE, FREE, STIFFNESS, PRESSURE_RATE, TRIAL, MASS_RATE, BY_SURFACE, HALF = range(8)
+# AT_WALL is the surface's temperature, SATURATION what its warming multiplies vapour's density by.
+(
+    PRESSURE,
+    FREE,
+    STIFFNESS,
+    PRESSURE_RATE,
+    TRIAL,
+    MASS_RATE,
+    BY_SURFACE,
+    HALF,
+    AT_WALL,
+    SATURATION,
+) = range(10)
+WHOLE = 10
+
+WARMING = -2  # in ``Film.gas_index``: not a species but how much warmer the liquid is
+# Entries of ``Film.layer``.
+HEAT_CAPACITY, LATENT_HEAT = range(2)
 
 
 class Gas(NamedTuple):
@@ -61,7 +79,9 @@ class Gas(NamedTuple):
 class Film(NamedTuple):
     """The liquid film: volume coordinate of its cells' edges (M+1,), dissolved species (L).
 
-    ``gas_index`` (L,) position of each in the gas, -1 for those of the liquid alone.
+    ``gas_index`` (L,) position of each in the gas, -1 for those of the liquid alone; ``WARMING``
+    for the last where the liquid warms. ``layer``: the liquid's heat capacity in J/m3/K and latent
+    heat in J/mol, used there only.
     """
 
     edges: Array
@@ -70,12 +90,23 @@ class Film(NamedTuple):
     bulk: Array
     gas_index: NDArray[np.int64]
     aqueous: Any
+    layer: Array = np.zeros(2)
+
+    @property
+    def dissolved(self) -> int:
+        """Number of species, without the warming."""
+        return int((self.gas_index != WARMING).sum())
+
+    @property
+    def warms(self) -> bool:
+        """Whether the liquid at the wall warms."""
+        return self.dissolved < len(self.gas_index)
 
 
 class Work(NamedTuple):
     """Room for what one evaluation finds, kept for the Jacobian."""
 
-    whole: Array  # (8,)
+    whole: Array  # (10,)
     cell: Array  # (N, 8)
     face: Array  # (N, 5)
     fractions: Array  # (N, K)
@@ -93,7 +124,7 @@ class Work(NamedTuple):
 def work_for(cells: int, species: int, scratch: Scratch, film: tuple[int, int]) -> Work:
     """Room for ``cells`` of ``species``; ``scratch`` of the kinetics, ``film`` (M, L)."""
     each = np.zeros((7, cells, species))
-    whole = np.zeros(8)
+    whole = np.zeros(WHOLE)
     whole[TRIAL] = 1.0
     return Work(
         whole, np.zeros((cells, 8)), np.zeros((cells, 5)), each[0], each[1], each[2], each[3],

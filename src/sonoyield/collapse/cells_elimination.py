@@ -10,7 +10,15 @@ from __future__ import annotations
 
 from sonoyield.collapse import cells as c
 from sonoyield.collapse import equations as eq
-from sonoyield.collapse.cells_newton import Blocks, Indices
+from sonoyield.collapse.cells_newton import (
+    BY_WARMING,
+    LATENT,
+    OF_FILM,
+    OF_GAS,
+    WATER,
+    Blocks,
+    Indices,
+)
 from sonoyield.collapse.kernel import call, inner
 from sonoyield.collapse.small_matrices import add_times, copy, invert, invert_scaled, times
 from sonoyield.describe.gas import Array
@@ -167,7 +175,46 @@ def _factorise_film(gamma: float, blocks: Blocks, gas_index: Indices) -> None:
                     through = blocks.inverse[last, k, j] * blocks.wall[2, j]
                     block[s, t] += gamma * gamma * blocks.wall[0, k] / blocks.numbers[2] * through
             block[s, s] += 1.0
+        if i == 0 and gas_index[kinds - 1] == c.WARMING:
+            _factorise_layer(gamma, blocks, gas_index, block)
         invert(block, blocks.film_inverse[i])
+
+
+@inner
+def _factorise_layer(gamma: float, blocks: Blocks, gas_index: Indices, block: Array) -> None:
+    """Subtract what comes back through the gas to and from the warming of the film's first cell."""
+    kinds, last = gas_index.size, blocks.own.shape[0] - 1
+    inverse, layer, answer = blocks.inverse[last], blocks.layer, blocks.lines[0]
+    m, warming, water = answer.size, kinds - 1, int(layer[WATER])
+    for t in range(kinds):
+        j = gas_index[t]
+        if t == warming:
+            for a in range(m):
+                answer[a] = inverse[a, m - 1] * blocks.numbers[3] / layer[OF_GAS]
+                answer[a] -= inverse[a, water] * layer[BY_WARMING]
+        elif j >= 0:
+            for a in range(m):
+                answer[a] = -inverse[a, j] * blocks.wall[2, j]
+        else:
+            continue
+        block[warming, t] -= gamma * gamma * _warms(blocks, answer)
+    for s in range(kinds):
+        k = gas_index[s]
+        if k >= 0:
+            through = blocks.wall[0, k] / blocks.numbers[2] * answer[k]
+            block[s, warming] -= gamma * gamma * through
+
+
+@inner
+def _warms(blocks: Blocks, x: Array) -> float:
+    """Warming, K/s, of the film's first cell by a change ``x`` (m,) of the outermost cell."""
+    count, layer = x.size - 1, blocks.layer
+    water = int(layer[WATER])
+    shares = 0.0
+    for k in range(count):
+        shares += x[k]
+    condenses = blocks.wall[0, water] * x[water] + blocks.wall[1, water] * shares
+    return (blocks.numbers[3] * x[count] + layer[LATENT] * condenses) / layer[OF_FILM]
 
 
 @inner
@@ -197,6 +244,10 @@ def substitute(
         for s in range(kinds):
             if gas_index[s] >= 0:
                 line[gas_index[s]] = -gamma * blocks.wall[2, gas_index[s]] * out[first + s]
+            elif gas_index[s] == c.WARMING:
+                warming = gamma * out[first + s]
+                line[count] = blocks.numbers[3] / blocks.layer[OF_GAS] * warming
+                line[int(blocks.layer[WATER])] -= blocks.layer[BY_WARMING] * warming
         add_times(blocks.inverse[cells - 1], line, out[first - m : first])
     for i in range(cells - 2, -1, -1):
         at = start + i * m
@@ -222,6 +273,8 @@ def _substitute_film(
             elif gas_index[s] >= 0:
                 flow = blocks.wall[0, gas_index[s]] * out[first - m + gas_index[s]]
                 line[s] += gamma * flow / blocks.numbers[2]
+            elif gas_index[s] == c.WARMING:
+                line[s] += gamma * _warms(blocks, out[first - m : first])
         times(blocks.film_inverse[i], line, out[at : at + kinds])
     for i in range(spots - 2, -1, -1):
         at = first + i * kinds
@@ -279,6 +332,12 @@ def _follow_wall(
                 flow = blocks.wall[2, k] * x[first + s]
                 out[c.CROSSED + k] += gamma * flow
                 carried += blocks.wall[3, k] * flow
+            elif k == c.WARMING:
+                water = int(blocks.layer[WATER])
+                flow = blocks.layer[BY_WARMING] * x[first + s]
+                out[c.CROSSED + water] += gamma * flow
+                carried += blocks.wall[3, water] * flow
+                out[c.LEDGER + eq.HEAT] -= gamma * blocks.numbers[3] * x[first + s]
     out[c.LEDGER + eq.CARRIED] += gamma * carried
     out[c.LEDGER + eq.HEAT] += gamma * blocks.numbers[3] * x[first - 1]
 
@@ -327,5 +386,10 @@ def _multiply_film(blocks: Blocks, gas_index: Indices, x: Array, out: Array) -> 
                 k = gas_index[s]
                 out[at + s] += blocks.wall[0, k] * x[first - m + k] / blocks.numbers[2]
                 out[first - m + k] -= blocks.wall[2, k] * x[at + s]
+            elif gas_index[s] == c.WARMING:
+                out[at + s] += _warms(blocks, x[first - m : first])
+                water = int(blocks.layer[WATER])
+                out[first - m + water] -= blocks.layer[BY_WARMING] * x[at + s]
+                out[first - 1] += blocks.numbers[3] / blocks.layer[OF_GAS] * x[at + s]
             if i + 1 < spots:
                 out[at + s] += blocks.film_outer[i, s] * x[at + kinds + s]

@@ -7,7 +7,7 @@ surface and, for what a liquid film follows, half a cell of liquid, in series.
 
 from __future__ import annotations
 
-from math import pi, sqrt
+from math import exp, nan, pi, sqrt
 
 from sonoyield.collapse import cells as c
 from sonoyield.collapse import equations as eq
@@ -33,14 +33,15 @@ def through_wall(state: Array, gas: c.Gas, film: c.Film, work: c.Work, out: Arra
     last = cells - 1
     at = c.CROSSED + count + last * (count + 1)
     pressure, area = work.whole[c.PRESSURE], work.face[last, c.AREA]
-    surface = gas.constants[eq.LIQUID_TEMPERATURE]
+    _surface(state, gas, film, work)
+    surface, saturation = work.whole[c.AT_WALL], work.whole[c.SATURATION]
     temperature = 0.5 * (state[at + count] + surface)
     thickness = work.whole[c.HALF]
     x, diffuses = work.row[0], work.row[1]
     mean_covolume = work.cell[last, c.COVOLUMES] / work.cell[last, c.AMOUNT]
     density = 1.0 / (GAS_CONSTANT * temperature / pressure + mean_covolume)
     at_surface = 1.0 / (GAS_CONSTANT * surface / pressure + mean_covolume)
-    _wall_mixture(work.fractions[last], gas, at_surface, x)
+    _wall_mixture(work.fractions[last], gas, at_surface, saturation, x)
     u = transport_logarithm(temperature, gas.constants[eq.TRANSPORT_TOP])
     conducts = mixture_conductivity(
         temperature, u, x, gas.conductivity, int(gas.constants[eq.WATER])
@@ -50,6 +51,7 @@ def through_wall(state: Array, gas: c.Gas, film: c.Film, work: c.Work, out: Arra
         resists += temperature_jump(
             surface, pressure, _mean_mass(x, gas), work.cell[last, c.CAPACITY]
         )
+    resists += _liquid_resists(film, area)
     work.face[last, c.HEAT_CONDUCTANCE] = area / resists
     mixture_diffusivities(temperature, u, pressure, x, gas.species, gas.diffusivity, diffuses)
     work.whole[c.BY_SURFACE] = 1.0 / at_surface  # m3/mol
@@ -63,7 +65,7 @@ def through_wall(state: Array, gas: c.Gas, film: c.Film, work: c.Work, out: Arra
         resistance = thickness * stays / (density * diffuses[k])
         resistance += gas.species[k, SURFACE] / at_surface
         work.conductance[last, k] = area / resistance
-        ahead = gas.species[k, EQUILIBRIUM] / at_surface
+        ahead = gas.species[k, EQUILIBRIUM] * saturation / at_surface
         work.flow[last, k] = work.conductance[last, k] * (work.fractions[last, k] - ahead)
     _into_film(state, film, work, area, at_surface)
     for k in range(count):
@@ -78,6 +80,35 @@ def through_wall(state: Array, gas: c.Gas, film: c.Film, work: c.Work, out: Arra
     work.whole[c.MASS_RATE] = mass_rate
     heat = work.face[last, c.HEAT_CONDUCTANCE] * (surface - state[at + count])
     work.cell[last, c.HEATING] += heat + brought
+
+
+@inner
+def _surface(state: Array, gas: c.Gas, film: c.Film, work: c.Work) -> None:
+    """Temperature of the surface, and vapour's density there over that at rest's temperature.
+
+    Clausius and Clapeyron with the latent heat at rest; not-a-number where not physical.
+    """
+    cells, count = work.fractions.shape
+    rest = gas.constants[eq.LIQUID_TEMPERATURE]
+    work.whole[c.AT_WALL], work.whole[c.SATURATION] = rest, 1.0
+    kinds = film.gas_index.size
+    if film.edges.size < 2 or film.gas_index[kinds - 1] != c.WARMING:
+        return
+    warmed = rest + state[c.CROSSED + count + cells * (count + 1) + kinds - 1]
+    if not 1.0 < warmed < eq.WARMEST_TRIAL:
+        warmed = nan
+    ease = film.layer[c.LATENT_HEAT] / GAS_CONSTANT * (1.0 / rest - 1.0 / warmed)
+    work.whole[c.AT_WALL], work.whole[c.SATURATION] = warmed, rest / warmed * exp(ease)
+
+
+@inner
+def _liquid_resists(film: c.Film, area: float) -> float:
+    """Resistance of half a cell of liquid to heat, K m2/W, where the liquid warms."""
+    kinds = film.gas_index.size
+    if film.edges.size < 2 or film.gas_index[kinds - 1] != c.WARMING:
+        return 0.0
+    conducts = film.diffusivity[kinds - 1] * film.layer[c.HEAT_CAPACITY]
+    return 0.5 * film.edges[1] / (area * conducts)
 
 
 @inner
@@ -102,13 +133,16 @@ def _mean_mass(x: Array, gas: c.Gas) -> float:
 
 
 @inner
-def _wall_mixture(inside: Array, gas: c.Gas, density: float, x: Array) -> None:
+def _wall_mixture(
+    inside: Array, gas: c.Gas, density: float, saturation: float, x: Array
+) -> None:
     """Mole fractions half-way between the outermost cell and the surface."""
     total = 0.0
     for k in range(x.size):
         x[k] = max(inside[k], 0.0)
         if gas.species[k, CROSSES] != 0.0:
-            x[k] = 0.5 * (x[k] + min(gas.species[k, EQUILIBRIUM] / density, 1.0))
+            at_rest = gas.species[k, EQUILIBRIUM]
+            x[k] = 0.5 * (x[k] + min(at_rest * saturation / density, 1.0))
         total += x[k]
     for k in range(x.size):
         x[k] /= total

@@ -19,7 +19,7 @@ from sonoyield.collapse import cells as c
 from sonoyield.collapse import equations as eq
 from sonoyield.collapse.aqueous import aqueous_jacobian
 from sonoyield.collapse.cells_rates import crowd
-from sonoyield.collapse.exchange import COVOLUME, ENTHALPY_AT_LIQUID, MASS
+from sonoyield.collapse.exchange import COVOLUME, ENTHALPY_AT_LIQUID, EQUILIBRIUM, MASS
 from sonoyield.collapse.film_grid import film_conductances
 from sonoyield.collapse.kernel import call, inner
 from sonoyield.collapse.kinetics import thermo
@@ -65,6 +65,12 @@ class Blocks(NamedTuple):
     film_line: Array  # (L,)
     derivatives: Array  # (K, K)
     by_temperature: Array  # (K,)
+    layer: Array  # (5,): where the liquid warms, as named below
+
+
+# Entries of ``Blocks.layer``: water's flow into the liquid by its warming, latent heat, heat
+# capacities (J/K) of the outermost cell and of the film's first one, water's place in the gas.
+BY_WARMING, LATENT, OF_GAS, OF_FILM, WATER = range(5)
 
 
 def blocks_for(cells: int, species: int, film: tuple[int, int], size: int) -> Blocks:
@@ -82,7 +88,7 @@ def blocks_for(cells: int, species: int, film: tuple[int, int], size: int) -> Bl
         np.zeros((2, size)),
         np.zeros((m, m)), np.zeros((m, m)), np.zeros((3, m)),
         np.zeros((kinds, kinds)), np.zeros(kinds),
-        np.zeros((species, species)), np.zeros(species),
+        np.zeros((species, species)), np.zeros(species), np.zeros(5),
     )  # fmt: skip
 
 
@@ -97,6 +103,7 @@ def evaluate(
     _between(gas, work, blocks)
     _at_wall(gas, film, work, blocks)
     _film_blocks(state, film, work, blocks)
+    _layer(gas, film, work, blocks)
     _pressure_vectors(state, gas, work, blocks)
     _mass_vectors(gas, film, work, blocks)
     _trial_columns(time, state, gas, film, work, blocks, rates, out)
@@ -266,6 +273,26 @@ def _film_blocks(state: Array, film: c.Film, work: c.Work, blocks: Blocks) -> No
 
 
 @inner
+def _layer(gas: c.Gas, film: c.Film, work: c.Work, blocks: Blocks) -> None:
+    """How the warming of the liquid at the wall acts on conduction and on vapour at its surface."""
+    warming = film.gas_index.size - 1
+    if film.edges.size < 2 or film.gas_index[warming] != c.WARMING:
+        return
+    last, layer = work.fractions.shape[0] - 1, blocks.layer
+    water = int(gas.constants[eq.WATER])
+    latent, temperature = film.layer[c.LATENT_HEAT], work.whole[c.AT_WALL]
+    steeper = (latent / (GAS_CONSTANT * temperature) - 1.0) / temperature
+    steeper = steeper * work.whole[c.BY_SURFACE] + GAS_CONSTANT / work.whole[c.PRESSURE]
+    ahead = gas.species[water, EQUILIBRIUM] * work.whole[c.SATURATION] * steeper
+    layer[BY_WARMING] = -work.conductance[last, water] * ahead
+    layer[LATENT], layer[WATER] = latent, water
+    layer[OF_GAS] = work.cell[last, c.AMOUNT] * work.cell[last, c.CAPACITY]
+    layer[OF_FILM] = film.layer[c.HEAT_CAPACITY] * film.edges[1]
+    lost = blocks.numbers[3] - latent * layer[BY_WARMING]
+    blocks.film_own[0, warming, warming] -= lost / layer[OF_FILM]
+
+
+@inner
 def _pressure_vectors(state: Array, gas: c.Gas, work: c.Work, blocks: Blocks) -> None:
     cells, count = work.fractions.shape
     pressure, free = work.whole[c.PRESSURE], work.whole[c.FREE]
@@ -326,6 +353,9 @@ def _mass_vectors(gas: c.Gas, film: c.Film, work: c.Work, blocks: Blocks) -> Non
     for s in range(film.gas_index.size):
         k = film.gas_index[s]
         blocks.by_film[s] = -gas.species[k, MASS] * blocks.wall[2, k] if k >= 0 else 0.0
+        if k == c.WARMING:
+            water = int(blocks.layer[WATER])
+            blocks.by_film[s] = -gas.species[water, MASS] * blocks.layer[BY_WARMING]
 
 
 @inner

@@ -32,7 +32,7 @@ def rates(time: float, state: Array, gas: c.Gas, film: c.Film, work: c.Work, out
     through_wall(state, gas, film, work, out)
     through_faces(state, gas, work, out)
     _pressure_and_motion(time, state, gas, work, out)
-    _in_film(state, film, work, out)
+    _in_film(state, gas, film, work, out)
 
 
 @inner
@@ -161,7 +161,7 @@ def _pressure_and_motion(time: float, state: Array, gas: c.Gas, work: c.Work, ou
     out[c.RADIUS], out[c.SPEED] = speed, acceleration
     last = c.CROSSED + count + (cells - 1) * (count + 1)
     heat = work.face[cells - 1, c.HEAT_CONDUCTANCE] * (
-        state[last + count] - constants[eq.LIQUID_TEMPERATURE]
+        state[last + count] - work.whole[c.AT_WALL]
     )
     carried = 0.0
     for k in range(count):
@@ -174,8 +174,11 @@ def _pressure_and_motion(time: float, state: Array, gas: c.Gas, work: c.Work, ou
 
 
 @inner
-def _in_film(state: Array, film: c.Film, work: c.Work, out: Array) -> None:
-    """Diffusion and reactions in the film, and what comes in through the wall."""
+def _in_film(state: Array, gas: c.Gas, film: c.Film, work: c.Work, out: Array) -> None:
+    """Diffusion and reactions in the film, and what comes in through the wall.
+
+    Heat enters by conduction and by vapour that condenses; other species bring none.
+    """
     cells, count = work.fractions.shape
     spots = film.edges.size - 1
     if spots < 1:
@@ -194,6 +197,12 @@ def _in_film(state: Array, film: c.Film, work: c.Work, out: Array) -> None:
     for s in range(kinds):
         if film.gas_index[s] >= 0:
             change[0, s] += work.flow[cells - 1, film.gas_index[s]] / film.edges[1]
+        elif film.gas_index[s] == c.WARMING:
+            hotter = state[first - 1] - work.whole[c.AT_WALL]
+            heat = work.face[cells - 1, c.HEAT_CONDUCTANCE] * hotter
+            water = int(gas.constants[eq.WATER])
+            heat += film.layer[c.LATENT_HEAT] * work.flow[cells - 1, water]
+            change[0, s] += heat / (film.layer[c.HEAT_CAPACITY] * film.edges[1])
 
 
 @making

@@ -16,13 +16,15 @@ class CellRecord:
     """The resolved gas at each step: N cells of mass fractions ``faces`` (N+1,), centre first.
 
     ``temperature`` (P, N) K, ``moles`` (P, N, K) mol; ``film`` (Q, M, L) mol/m3, concentrations in
-    the liquid film at the last Q steps.
+    the liquid film at the last Q steps. ``warming`` (P, M) K, of the film over the liquid far away,
+    where the liquid at the wall warms.
     """
 
     faces: Array
     temperature: Array
     moles: Array
     film: Array | None = None
+    warming: Array | None = None
 
 
 @dataclass(frozen=True, eq=False)

