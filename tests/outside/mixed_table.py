@@ -82,7 +82,7 @@ def mixed_of(case: Case) -> Case:
 
 def resolved_of(case: Case) -> Case:
     """What the resolved gas finds, the liquid a perfect sink as in the mixed one."""
-    history = follow_resolved(bubble(case), accuracy=ONCE)
+    history = follow_resolved(bubble(case), accuracy=ONCE, steam=float(case["mixed_vapour"]))
     assert history.cells is not None
     return {
         "resolved_peak_K": _round(collapse_of(history).peak_temperature_K),
@@ -95,7 +95,9 @@ def film_of(case: Case) -> Case:
     """What the resolved gas finds with the liquid film around it."""
     nitrogen = "N2" in GASES[case["gas"]]
     chemistry = aqueous_chemistry(float(case["temperature_K"]), {}, nitrogen=nitrogen)
-    return _delivered("film", follow_resolved(bubble(case), accuracy=ONCE, chemistry=chemistry))
+    steam = float(case["mixed_vapour"])
+    history = follow_resolved(bubble(case), accuracy=ONCE, chemistry=chemistry, steam=steam)
+    return _delivered("film", history)
 
 
 def _wanted(history: History) -> bool:
@@ -129,7 +131,8 @@ def main(path: Path) -> None:
     """Write the table."""
     rows: list[Case] = []
     for case in drawn():
-        rows.append(case | mixed_of(case) | resolved_of(case) | film_of(case))
+        case = case | mixed_of(case)
+        rows.append(case | resolved_of(case) | film_of(case))
         with path.open("w", newline="", encoding="utf-8") as handle:
             writer = csv.DictWriter(handle, rows[0], lineterminator="\n")
             writer.writeheader()

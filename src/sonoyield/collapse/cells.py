@@ -29,8 +29,8 @@ CROSSED = LEDGER + eq.LEDGER  # then the cells, from CROSSED + K on
 # Columns of ``Work.cell``: totals of a cell, its molar heat capacity, what heats it, what it gains.
 AMOUNT, WEIGHT, COVOLUMES, VOLUME, CAPACITY, HEATING, GAIN, CENTRE = range(8)
 # Columns of ``Work.face``; face i lies outside cell i, the last one is the wall.
-# LEANING, LEANING_HEAT: weight of the cell inside in what drift and heat carry; 1/2 is central.
-AREA, HEAT_CONDUCTANCE, DRIFT, LEANING, LEANING_HEAT = range(5)
+# LEANING_HEAT: weight of the cell inside in the heat that flows carry; 1/2 is central.
+AREA, HEAT_CONDUCTANCE, DRIFT, LEANING_HEAT = range(4)
 # Entries of ``Work.whole``.
 # TRIAL multiplies the pressure (1, but for the Jacobian).
 # AT_WALL is the surface's temperature, SATURATION what its warming multiplies vapour's density by.
@@ -108,7 +108,7 @@ class Work(NamedTuple):
 
     whole: Array  # (10,)
     cell: Array  # (N, 8)
-    face: Array  # (N, 5)
+    face: Array  # (N, 4)
     fractions: Array  # (N, K)
     capacity: Array  # (N, K)
     enthalpy: Array  # (N, K)
@@ -116,6 +116,7 @@ class Work(NamedTuple):
     conductance: Array  # (N, K), mol/s per mole fraction, each face
     per_mass: Array  # (N, K), mol/kg at each face
     flow: Array  # (N, K), mol/s outwards through each face
+    share: Array  # (N, K), of the two neighbours' mol/kg that is inside each face
     row: Array  # (6, K)
     kinetics: Scratch
     film: Array  # (M, L)
@@ -123,10 +124,10 @@ class Work(NamedTuple):
 
 def work_for(cells: int, species: int, scratch: Scratch, film: tuple[int, int]) -> Work:
     """Room for ``cells`` of ``species``; ``scratch`` of the kinetics, ``film`` (M, L)."""
-    each = np.zeros((7, cells, species))
+    each = np.zeros((8, cells, species))
     whole = np.zeros(WHOLE)
     whole[TRIAL] = 1.0
     return Work(
-        whole, np.zeros((cells, 8)), np.zeros((cells, 5)), each[0], each[1], each[2], each[3],
-        each[4], each[5], each[6], np.zeros((6, species)), scratch, np.zeros(film),
+        whole, np.zeros((cells, 8)), np.zeros((cells, 4)), each[0], each[1], each[2], each[3],
+        each[4], each[5], each[6], each[7], np.zeros((6, species)), scratch, np.zeros(film),
     )  # fmt: skip

@@ -228,23 +228,40 @@ def _face(i: int, inner: float, outer: float, gas: c.Gas, work: c.Work) -> None:
     )
     amount = cell[i, c.AMOUNT] + cell[i + 1, c.AMOUNT]
     density = amount / (cell[i, c.VOLUME] + cell[i + 1, c.VOLUME])
-    drift, least = 0.0, 1e300
+    drift = 0.0
     for k in range(count):
         conductance = density * diffuses[k] * per_length
-        least = min(least, conductance)
         flow = conductance * (work.fractions[i, k] - work.fractions[i + 1, k])
         work.conductance[i, k] = conductance
         work.flow[i, k] = flow
         drift += gas.species[k, MASS] * flow
     drift += gas.faces[i + 1] * work.whole[c.MASS_RATE]
     work.face[i, c.DRIFT] = drift
+    _at_face(i, gas, work)
+    for k in range(count):
+        work.flow[i, k] -= work.per_mass[i, k] * drift
+
+
+@inner
+def _at_face(i: int, gas: c.Gas, work: c.Work) -> None:
+    """What a kilogram holds at the face outside cell ``i``: harmonic means, scaled to a kilogram.
+
+    Of second order as plain means are, and nothing is taken from a cell that has none of it.
+    """
+    count = work.fractions.shape[1]
+    cell = work.cell
     inside = cell[i, c.AMOUNT] / cell[i, c.WEIGHT]
     outside = cell[i + 1, c.AMOUNT] / cell[i + 1, c.WEIGHT]
-    share = work.face[i, c.LEANING] = leaning(-drift * max(inside, outside), least)
+    whole = 0.0
     for k in range(count):
-        work.per_mass[i, k] = share * work.fractions[i, k] * inside
-        work.per_mass[i, k] += (1.0 - share) * work.fractions[i + 1, k] * outside
-        work.flow[i, k] -= work.per_mass[i, k] * drift
+        a, b = work.fractions[i, k] * inside, work.fractions[i + 1, k] * outside
+        mean, share = 0.0, 0.5
+        if a > 0.0 and b > 0.0:
+            mean, share = 2.0 * a * b / (a + b), a / (a + b)
+        work.per_mass[i, k], work.share[i, k] = mean, share
+        whole += gas.species[k, MASS] * mean
+    for k in range(count):
+        work.per_mass[i, k] /= whole
 
 
 @inner

@@ -167,9 +167,7 @@ def _between(gas: c.Gas, work: c.Work, blocks: Blocks) -> None:
     cells, count = work.fractions.shape
     for i in range(cells - 1):
         for side in range(2):
-            sign = 1.0 if side == 0 else -1.0
-            leans = work.face[i, c.LEANING]
-            drift = work.face[i, c.DRIFT] * (leans if side == 0 else 1.0 - leans)
+            sign, drift = 1.0 if side == 0 else -1.0, work.face[i, c.DRIFT]
             part = blocks.inner[i] if side == 0 else blocks.outer[i]
             amount = work.cell[i + side, c.AMOUNT]
             mean = 0.0
@@ -178,7 +176,8 @@ def _between(gas: c.Gas, work: c.Work, blocks: Blocks) -> None:
                 mean += by_mass * work.fractions[i + side, k]
             for k in range(count):
                 part[0, k] = work.conductance[i, k] / amount
-                part[0, k] -= sign * drift / work.cell[i + side, c.WEIGHT]
+                beyond = 1.0 - work.share[i, k] if side == 0 else work.share[i, k]
+                part[0, k] -= sign * drift * 2.0 * beyond**2 / work.cell[i + side, c.WEIGHT]
                 part[1, k] = -work.conductance[i, k] * work.fractions[i + side, k] / amount
                 part[2, k] = (gas.species[k, MASS] * work.conductance[i, k] - mean) / amount
                 blocks.per_mass[i, k] = work.per_mass[i, k]

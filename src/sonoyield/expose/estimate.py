@@ -15,7 +15,7 @@ from sonoyield.collapse.ionisation import ionisation_of
 from sonoyield.collapse.ledger import Energies, balance, energies
 from sonoyield.collapse.one_way import follow_one_way
 from sonoyield.collapse.outcome import outcome_of
-from sonoyield.collapse.resolved import CELLS, follow_resolved
+from sonoyield.collapse.resolved import follow_resolved
 from sonoyield.collapse.thermo_range import thermo_range
 from sonoyield.collapse.thresholds import mechanical_index
 from sonoyield.collapse.uniformity import uniformity_of
@@ -29,7 +29,7 @@ from sonoyield.describe.gas import ABSORBED, phase_for
 from sonoyield.describe.liquid import LiquidState, liquid_state
 from sonoyield.describe.protocol import Protocol
 from sonoyield.expose.dose import dose
-from sonoyield.expose.remarks import FAST_WARNING, remarks_on
+from sonoyield.expose.remarks import remarks_on
 from sonoyield.expose.result import Estimate
 from sonoyield.expose.schedule import driving
 
@@ -45,7 +45,8 @@ def estimate(
     """Drive the protocol's bubble through its collapses and count what it makes.
 
     The headline is the resolved bubble, with the well-mixed gas in Cantera's reactor beside it;
-    with ``fast``, or where the protocol asks for a mixed interior, it is the well-mixed gas alone.
+    with ``fast``, or where the protocol asks for a mixed interior, it is the well-mixed gas alone,
+    with the size of its known error among the warnings.
     With ``both`` the reactor's other coupling is run too and its difference reported. Raises
     ``FileNotFoundError`` when a shipped mechanism is not installed.
     """
@@ -56,8 +57,9 @@ def estimate(
     if both:
         mixed = _with_other_coupling(mixed, bubble, accuracy)
     if fast or protocol.model.interior == "mixed":
-        return _labelled(mixed) if fast else mixed
-    history = _resolve(bubble, protocol, accuracy)
+        return mixed
+    steam = mixed.collapse.vapour_fraction_at_peak if mixed.collapse is not None else 0.0
+    history = _resolve(bubble, protocol, accuracy, steam)
     result = _estimate(protocol, liquid, history, accuracy)
     wet = history.cells is not None and protocol.model.film and protocol.model.uptake
     if result.counts is not None and wet:
@@ -101,7 +103,9 @@ def _run(
     return run(bubble, protocol.model.collapses, accuracy)
 
 
-def _resolve(bubble: Bubble, protocol: Protocol, accuracy: Accuracy) -> History:
+def _resolve(
+    bubble: Bubble, protocol: Protocol, accuracy: Accuracy, steam: float
+) -> History:
     model = protocol.model
     chemistry = None
     if model.film and model.uptake:
@@ -116,10 +120,11 @@ def _resolve(bubble: Bubble, protocol: Protocol, accuracy: Accuracy) -> History:
         bubble,
         model.collapses,
         accuracy,
-        cells=model.cells or CELLS,
+        cells=model.cells,
         chemistry=chemistry,
         wall=model.wall,
         temperature_jump=model.temperature_jump,
+        steam=steam,
     )
 
 
@@ -171,13 +176,6 @@ def _estimate(
 def _mean_energies(history: History) -> Energies:
     windows = [asdict(energies(history, span)) for span in history.spans]
     return Energies(**{key: sum(w[key] for w in windows) / len(windows) for key in windows[0]})
-
-
-def _labelled(mixed: Estimate) -> Estimate:
-    """The well-mixed gas as headline, with the size of its known error."""
-    if mixed.counts is None:
-        return mixed
-    return replace(mixed, warnings=(FAST_WARNING, *mixed.warnings))
 
 
 def _with_film(result: Estimate) -> Estimate:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from sonoyield.collapse.follow import PATIENCE
 from sonoyield.collapse.history import History
 from sonoyield.collapse.ionisation import THRESHOLD, IonisationEstimate, ionisation_of
+from sonoyield.collapse.mixed_rule import mixed_is_safe
 from sonoyield.collapse.outcome import Code, Outcome
 from sonoyield.collapse.thermo_range import thermo_range
 from sonoyield.collapse.uniformity import SONIC, UNEVEN, Uniformity
@@ -14,17 +15,8 @@ from sonoyield.describe.protocol import Protocol
 from sonoyield.expose.schedule import pulse_warning
 
 COLD_GAS = 200.0  # K, where the thermo polynomials end below
-FAST_WARNING = (
-    "Fast: a gas of one temperature, without the hot core, the cold wall layer and the liquid film."
-)
 WARM_LIQUID = 50.0  # K of warming beyond which constant properties of water err by tens of %
 FAST_WALL = 0.5  # of the sound speed: Keller-Miksis begins to err
-MUCH_NITROGEN = 0.1  # share of the dry gas
-AIR_WARNING = (
-    "A gas of one temperature makes too little in nitrogen and air, whose core is hotter than "
-    "their mean: at 355 kHz, 2 bar, 3 um an independent, radially resolved model gave 23 "
-    "times the OH. Do not rank air against argon by these numbers."
-)
 
 
 def remarks_on(
@@ -62,9 +54,8 @@ def remarks_on(
     found += _on_pressure(uniformity)
     if history.cells is not None and history.cells.warming is not None:
         found += _on_warming(float(history.cells.warming[:, 0].max()))
-    much = protocol.gas.mixture.get("N2", 0.0) > MUCH_NITROGEN
-    if history.cells is None and collapse.inertial and much:
-        found.append(AIR_WARNING)
+    if history.cells is None and collapse.inertial:
+        found.append(mixed_is_safe(collapse, protocol.gas.mixture).sentence)
     pulses = pulse_warning(protocol.schedule, protocol.drive.frequency)
     return [*found, pulses] if pulses else found
 
