@@ -272,7 +272,7 @@ def test_newton_converges_where_the_liquid_warms(film: bool) -> None:
     gamma = 1e-11
     left = np.linalg.solve(np.eye(stage.size) - gamma * used, gamma * (exact - used))
     assert np.abs(np.linalg.eigvals(gamma * exact)).max() > 5.0
-    assert np.abs(np.linalg.eigvals(left)).max() < 0.014
+    assert np.abs(np.linalg.eigvals(left)).max() < 0.02
     kinds = len(stage.film.gas_index)
     warming_column = stage.wet + kinds - 1
     off = np.abs(used - exact)[:, warming_column] / np.abs(exact[:, warming_column]).max()

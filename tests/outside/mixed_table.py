@@ -37,7 +37,7 @@ GASES: Mapping[str, Mapping[str, float]] = {
 INPUTS = ("gas", "frequency_Hz", "pressure_Pa", "radius_m", "temperature_K")
 COUNTED = ("_OH", "_H2O2", "_NOx")
 NITROGEN = ("NO", "NO2", "HONO", "HONO2")
-ONCE = Accuracy(relative=1e-6, tighten=0, seconds=60.0)
+ONCE = Accuracy(relative=1e-6, tighten=0, seconds=600.0)
 Case = dict[str, str]
 
 
