@@ -250,7 +250,7 @@ def _tell_first_compilation() -> None:
     from sonoyield.collapse.compiled import is_cached
 
     if not is_cached():
-        _say("compiling the bubble equations for this machine, once (about a minute) ...")
+        _say("compiling the bubble equations for this machine, once (about half a minute) ...")
 
 
 def _say(message: str) -> None:
