@@ -15,7 +15,7 @@ from sonoyield.collapse.ionisation import ionisation_of
 from sonoyield.collapse.ledger import Energies, balance, energies
 from sonoyield.collapse.one_way import follow_one_way
 from sonoyield.collapse.outcome import outcome_of
-from sonoyield.collapse.resolved import follow_resolved
+from sonoyield.collapse.resolved import STEAMY, STEAMY_CELLS, follow_resolved
 from sonoyield.collapse.thermo_range import thermo_range
 from sonoyield.collapse.thresholds import mechanical_index
 from sonoyield.collapse.uniformity import uniformity_of
@@ -64,7 +64,21 @@ def estimate(
     wet = history.cells is not None and protocol.model.film and protocol.model.uptake
     if result.counts is not None and wet:
         result = _with_film(result)
-    return replace(result, mixed=mixed, coupling_difference=mixed.coupling_difference)
+    told = (*result.warnings, *_on_steam(history, steam)) if result.counts else ()
+    return replace(
+        result, mixed=mixed, coupling_difference=mixed.coupling_difference, warnings=told
+    )
+
+
+def _on_steam(history: History, steam: float) -> list[str]:
+    """What few cells leave of the layer in which nearly pure steam condenses."""
+    cells = history.cells
+    if steam < STEAMY or cells is None or len(cells.faces) > STEAMY_CELLS:
+        return []
+    return [
+        "Nearly pure steam condenses in a layer thinner than "
+        f"{len(cells.faces) - 1} cells resolve: 20 leave some 40 % too much OH, {STEAMY_CELLS} some 5 % (oxygen, 22 kHz)."
+    ]
 
 
 def liquid_of(protocol: Protocol) -> LiquidState:
