@@ -1,8 +1,7 @@
 """Steps of the resolved bubble: backward differentiation with Newton's method, compiled.
 
 The numerical differentiation formulas of Shampine and Reichelt 1997 (SIAM J. Sci. Comput. 18, 1),
-orders 1 to 5 in backward differences. The equations of a step are solved by ``cells_newton``
-and
+orders 1 to 5 in backward differences. The equations of a step are solved by ``cells_newton`` and
 ``cells_elimination`` directly, so that what they conserve is conserved, and a run stays in compiled
 code.
 """

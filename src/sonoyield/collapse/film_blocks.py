@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from numba import njit
 
+from sonoyield.collapse.small_matrices import add_times, times
 from sonoyield.describe.gas import Array
 
 
@@ -43,11 +44,11 @@ def solve(inner: Array, outer: Array, inverse: Array, right: Array, out: Array) 
         for s in range(kinds):
             if m > 0:
                 right[m, s] += inner[m, s] * out[m - 1, s]
-        _times(inverse[m], right[m], out[m])
+        times(inverse[m], right[m], out[m])
     for m in range(count - 2, -1, -1):
         for s in range(kinds):
             right[m, s] = outer[m, s] * out[m + 1, s]
-        _add_times(inverse[m], right[m], out[m])
+        add_times(inverse[m], right[m], out[m])
 
 
 @njit(cache=True, error_model="numpy")
@@ -66,19 +67,3 @@ def _invert(block: Array) -> None:
             block[s, p] = 0.0
             for t in range(size):
                 block[s, t] -= factor * block[p, t]
-
-
-@njit(cache=True, error_model="numpy")
-def _times(matrix: Array, x: Array, out: Array) -> None:
-    for s in range(out.size):
-        out[s] = 0.0
-    _add_times(matrix, x, out)
-
-
-@njit(cache=True, error_model="numpy", fastmath=True)
-def _add_times(matrix: Array, x: Array, out: Array) -> None:
-    for s in range(out.size):
-        total = 0.0
-        for t in range(out.size):
-            total += matrix[s, t] * x[t]
-        out[s] += total

@@ -77,7 +77,8 @@ def _on_steam(history: History, steam: float) -> list[str]:
         return []
     return [
         "Nearly pure steam condenses in a layer thinner than "
-        f"{len(cells.faces) - 1} cells resolve: 20 leave some 40 % too much OH, {STEAMY_CELLS} some 5 % (oxygen, 22 kHz)."
+        f"{len(cells.faces) - 1} cells resolve: 20 leave some 40 % too much OH, "
+        f"{STEAMY_CELLS} some 5 % (oxygen, 22 kHz)."
     ]
 
 
